@@ -237,14 +237,49 @@ func (n *Number) UnmarshalJSON(b []byte) error {
 	return nil
 }
 
-// UnmarshalText reads the number from a text, for TOML keys and flags.
+// ParseScientific is ParseTyped with a power of ten allowed, as uncertainties are
+// often written: 2e-6 is 0.000002. The number must fit in MaxDigits digits.
+func ParseScientific(s string) (Number, error) {
+	mantissa, power, found := strings.Cut(strings.ToLower(strings.TrimSpace(s)), "e")
+	n, err := ParseTyped(mantissa)
+	if err != nil || !found {
+		return n, err
+	}
+	e, err := strconv.Atoi(power)
+	if err != nil || e < -MaxDigits || e > MaxDigits {
+		return Number{}, fmt.Errorf("%q: %w", s, ErrSyntax)
+	}
+	if decimals := n.decimals - e; decimals >= 0 && decimals <= MaxDigits {
+		return New(n.unscaled, decimals), nil
+	}
+	if up, ok := scaleUp(n.unscaled, e-n.decimals); ok && up < 1e18 && up > -1e18 {
+		return New(up, 0), nil
+	}
+	return Number{}, fmt.Errorf("%q: %w", s, ErrRange)
+}
+
+// UnmarshalText reads what ParseScientific reads, for flags.
 func (n *Number) UnmarshalText(b []byte) error {
-	parsed, err := ParseTyped(string(b))
+	parsed, err := ParseScientific(string(b))
 	if err != nil {
 		return err
 	}
 	*n = parsed
 	return nil
+}
+
+// UnmarshalTOML reads a TOML string, integer or float. A float is taken as the
+// shortest decimal that means it, so 0.006 stays 0.006.
+func (n *Number) UnmarshalTOML(v any) error {
+	switch v := v.(type) {
+	case string:
+		return n.UnmarshalText([]byte(v))
+	case int64:
+		return n.UnmarshalText([]byte(strconv.FormatInt(v, 10)))
+	case float64:
+		return n.UnmarshalText([]byte(strconv.FormatFloat(v, 'g', -1, 64)))
+	}
+	return fmt.Errorf("%v: %w", v, ErrSyntax)
 }
 
 // MarshalText writes the number as it was written.

@@ -121,3 +121,32 @@ func TestFloatIsTheNearest(t *testing.T) {
 		}
 	})
 }
+
+func TestUncertaintiesMayBeWrittenWithAPowerOfTen(t *testing.T) {
+	for in, want := range map[string]string{"2e-6": "0.000002", "9.9E-6": "0.0000099", "1.50e1": "15.0", "3e2": "300", "0.0001": "0.0001"} {
+		if n, err := ParseScientific(in); err != nil || n.String() != want {
+			t.Errorf("ParseScientific(%q) = %q, %v; want %q", in, n, err, want)
+		}
+	}
+	for _, in := range []string{"2e", "e3", "2e-60", "2e1.5", "1e2e3", "9e18"} {
+		if n, err := ParseScientific(in); err == nil {
+			t.Errorf("ParseScientific(%q) = %q, want an error", in, n)
+		}
+	}
+}
+
+func TestTOMLNumbersKeepTheirDigits(t *testing.T) {
+	for _, tt := range []struct {
+		in   any
+		want string
+	}{{"0.0060", "0.0060"}, {5e-7, "0.0000005"}, {int64(8000), "8000"}} {
+		var n Number
+		if err := n.UnmarshalTOML(tt.in); err != nil || n.String() != tt.want {
+			t.Errorf("UnmarshalTOML(%v) = %q, %v; want %q", tt.in, n, err, tt.want)
+		}
+	}
+	var n Number
+	if err := n.UnmarshalTOML(true); err == nil {
+		t.Error("a boolean was taken for a number")
+	}
+}
