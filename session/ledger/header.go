@@ -5,7 +5,6 @@ import (
 	"encoding/json"
 	"errors"
 	"fmt"
-	"strconv"
 	"unicode/utf8"
 )
 
@@ -27,19 +26,32 @@ type Header struct {
 
 var errHeader = errors.New("not an event of this ledger: the header is malformed")
 
+// rawHeader is a Header whose texts are still bytes of the line.
+type rawHeader struct {
+	seq, offsetMin, runMS    int64
+	at, actor, kind, subject []byte
+}
+
 // ParseHeader reads the header of an event's bytes. It is strict about the order of
 // keys because the bytes are ours; it does not look into the body.
 func ParseHeader(line []byte) (Header, error) {
+	r, err := parseRaw(line)
+	if err != nil {
+		return Header{}, err
+	}
+	return Header{r.seq, string(r.at), r.offsetMin, r.runMS, string(r.actor), string(r.kind), string(r.subject)}, nil
+}
+
+func parseRaw(line []byte) (rawHeader, error) {
 	s := scan{rest: line}
-	h := Header{
-		Seq: s.number(`{"seq":`), At: s.text(`,"at":`), OffsetMin: s.number(`,"offset_min":`), RunMS: s.number(`,"run_ms":`),
-		Actor: s.text(`,"actor":`), Kind: s.text(`,"kind":`), Subject: s.text(`,"subject":`),
-	}
+	r := rawHeader{seq: s.number(`{"seq":`), at: s.text(`,"at":`)}
+	r.offsetMin, r.runMS = s.number(`,"offset_min":`), s.number(`,"run_ms":`)
+	r.actor, r.kind, r.subject = s.text(`,"actor":`), s.text(`,"kind":`), s.text(`,"subject":`)
 	s.word(`,"body":`)
-	if s.failed || h.Kind == "" || h.Actor == "" || !wellFormedTime(h.At) {
-		return Header{}, errHeader
+	if s.failed || len(r.kind) == 0 || len(r.actor) == 0 || !wellFormedTime(r.at) {
+		return rawHeader{}, errHeader
 	}
-	return h, nil
+	return r, nil
 }
 
 // Fill gives the part of the line behind "body", without the closing brace: the
@@ -71,58 +83,67 @@ func (s *scan) word(w string) {
 // number reads a whole number in its shortest form after the key.
 func (s *scan) number(key string) int64 {
 	s.word(key)
-	if s.failed {
-		return 0
+	digits := s.rest
+	negative := len(digits) > 0 && digits[0] == '-'
+	if negative {
+		digits = digits[1:]
 	}
+	var n int64
 	end := 0
-	for end < len(s.rest) && (s.rest[end] == '-' || s.rest[end] >= '0' && s.rest[end] <= '9') {
+	for end < len(digits) && end < 18 && digits[end] >= '0' && digits[end] <= '9' {
+		n = 10*n + int64(digits[end]-'0')
 		end++
 	}
-	text := string(s.rest[:end])
-	n, err := strconv.ParseInt(text, 10, 64)
-	if err != nil || strconv.FormatInt(n, 10) != text {
+	if s.failed || end == 0 || digits[0] == '0' && (end > 1 || negative) {
 		s.failed = true
 		return 0
 	}
-	s.rest = s.rest[end:]
+	s.rest = digits[end:]
+	if negative {
+		return -n
+	}
 	return n
 }
 
-// text reads a JSON string after the key; one without escapes costs one allocation.
-func (s *scan) text(key string) string {
+// text reads a JSON string after the key; only one with escapes is copied.
+func (s *scan) text(key string) []byte {
 	s.word(key)
 	if s.failed || len(s.rest) == 0 || s.rest[0] != '"' {
 		s.failed = true
-		return ""
+		return nil
 	}
-	end, escaped := 1, false
-	for end < len(s.rest) && s.rest[end] != '"' {
-		if s.rest[end] == '\\' {
-			escaped = true
-			end++
-		}
+	end := 1
+	for end < len(s.rest) && s.rest[end] != '"' && s.rest[end] != '\\' {
 		end++
+	}
+	if end < len(s.rest) && s.rest[end] == '\\' {
+		return s.escaped()
 	}
 	if end >= len(s.rest) {
 		s.failed = true
-		return ""
+		return nil
 	}
-	quoted := s.rest[:end+1]
+	text := s.rest[1:end]
 	s.rest = s.rest[end+1:]
-	if !escaped {
-		return string(quoted[1:end])
-	}
-	var text string
-	if json.Unmarshal(quoted, &text) != nil {
-		s.failed = true
-	}
 	return text
+}
+
+// escaped reads a string with escapes, which begins at the present place.
+func (s *scan) escaped() []byte {
+	d := json.NewDecoder(bytes.NewReader(s.rest))
+	var text string
+	if d.Decode(&text) != nil {
+		s.failed = true
+		return nil
+	}
+	s.rest = s.rest[d.InputOffset():]
+	return []byte(text)
 }
 
 // timeMask is the form of a time: 0 stands for a digit.
 const timeMask = "0000-00-00T00:00:00.000Z"
 
-func wellFormedTime(at string) bool {
+func wellFormedTime(at []byte) bool {
 	if len(at) != len(timeMask) {
 		return false
 	}

@@ -94,7 +94,7 @@ type row struct {
 const batchRows = 2048
 
 // rows reads up to limit events from the given number on, in order, as they stand:
-// gaps and all.
+// gaps and all. The bodies of one call share memory but not capacity.
 func (s *store) rows(ctx context.Context, from int64, limit int) ([]row, error) {
 	rs, err := s.db.QueryContext(ctx, `SELECT seq, body, nodes FROM event WHERE seq >= ? ORDER BY seq LIMIT ?`, from, limit)
 	if err != nil {
@@ -102,12 +102,16 @@ func (s *store) rows(ctx context.Context, from int64, limit int) ([]row, error) 
 	}
 	defer rs.Close()
 	out := make([]row, 0, min(limit, batchRows))
+	var held []byte
 	for rs.Next() {
-		var r row
-		if err := rs.Scan(&r.seq, &r.body, &r.nodes); err != nil {
+		var seq int64
+		var body, nodes sql.RawBytes
+		if err := rs.Scan(&seq, &body, &nodes); err != nil {
 			return nil, err
 		}
-		out = append(out, r)
+		start, middle := len(held), len(held)+len(body)
+		held = append(append(held, body...), nodes...)
+		out = append(out, row{seq, held[start:middle:middle], held[middle:len(held):len(held)]})
 	}
 	return out, rs.Err()
 }
