@@ -57,7 +57,7 @@ type Ledger struct {
 	broken  error    // set when it is not known what the disk holds
 	unclear *change  // what was being written then
 
-	size atomic.Int64 // edge.size, readable without the turn
+	size atomic.Int64 // events known to be durable, readable without the turn
 }
 
 // Open opens the ledger for writing and checks what can be checked in a moment:
@@ -79,6 +79,7 @@ func Open(ctx context.Context, opt Options) (*Ledger, error) {
 	if err := l.load(ctx); err != nil {
 		return nil, errors.Join(err, l.release())
 	}
+	l.size.Store(l.edge.size)
 	return l, nil
 }
 
@@ -116,7 +117,6 @@ func (l *Ledger) load(ctx context.Context) error {
 		return err
 	}
 	l.keys, l.edge, l.covered = keys, edge, covered
-	l.size.Store(edge.size)
 	return l.indexBlocks(ctx, edge.size)
 }
 

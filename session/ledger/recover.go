@@ -54,7 +54,7 @@ func (l *Ledger) Recover(ctx context.Context) ([]Entry, error) {
 
 // recover reopens the file, checks it and compares it with the unclear change.
 func (l *Ledger) recover(ctx context.Context) (happened bool, err error) {
-	before := l.edge.size
+	before := l.Size()
 	if err := l.reopen(ctx); err != nil {
 		return false, err
 	}
@@ -63,6 +63,7 @@ func (l *Ledger) recover(ctx context.Context) (happened bool, err error) {
 		return false, err
 	}
 	l.broken, l.unclear = nil, nil
+	l.size.Store(l.edge.size)
 	return happened, nil
 }
 
