@@ -145,7 +145,7 @@ func (l *Ledger) transact(ctx context.Context, c change) error {
 	if err != nil {
 		return err
 	}
-	if err := errors.Join(l.at(afterBegin), l.insert(ctx, tx, c)); err != nil {
+	if err := errors.Join(l.at(afterBegin), l.insertRows(ctx, tx, c)); err != nil {
 		return errors.Join(err, tx.Rollback())
 	}
 	if err := l.at(beforeCommit); err != nil {
@@ -157,12 +157,13 @@ func (l *Ledger) transact(ctx context.Context, c change) error {
 	return l.at(afterCommit)
 }
 
-func (l *Ledger) insert(ctx context.Context, tx *sql.Tx, c change) error {
+func (l *Ledger) insertRows(ctx context.Context, tx *sql.Tx, c change) error {
+	insert := tx.StmtContext(ctx, l.insert)
 	for i, e := range c.entries {
 		if err := l.at(beforeInsert); err != nil {
 			return err
 		}
-		if _, err := tx.ExecContext(ctx, `INSERT INTO event (seq, body, nodes) VALUES (?, ?, ?)`, e.Seq, e.Body, c.nodes[i]); err != nil {
+		if _, err := insert.ExecContext(ctx, e.Seq, e.Body, c.nodes[i]); err != nil {
 			return err
 		}
 		if err := l.at(afterInsert); err != nil {

@@ -104,16 +104,26 @@ func unpackSeqs(block int64, packed []byte) ([]int64, error) {
 }
 
 // blockWords collects the words of one block.
-type blockWords struct{ subjects, kinds, actors map[string][]int64 }
+type blockWords struct{ subjects, kinds, actors wordList }
 
-func newBlockWords() *blockWords {
-	return &blockWords{map[string][]int64{}, map[string][]int64{}, map[string][]int64{}}
+// wordList gives for each word the numbers of the events that have it.
+type wordList map[string]*[]int64
+
+func (l wordList) add(word []byte, seq int64) {
+	seqs := l[string(word)]
+	if seqs == nil {
+		seqs = new([]int64)
+		l[string(word)] = seqs
+	}
+	*seqs = append(*seqs, seq)
 }
 
+func newBlockWords() *blockWords { return &blockWords{wordList{}, wordList{}, wordList{}} }
+
 func (w *blockWords) add(h rawHeader) {
-	w.subjects[string(h.subject)] = append(w.subjects[string(h.subject)], h.seq)
-	w.kinds[string(h.kind)] = append(w.kinds[string(h.kind)], h.seq)
-	w.actors[string(h.actor)] = append(w.actors[string(h.actor)], h.seq)
+	w.subjects.add(h.subject, h.seq)
+	w.kinds.add(h.kind, h.seq)
+	w.actors.add(h.actor, h.seq)
 }
 
 // mention is one row of the index.
@@ -128,10 +138,10 @@ func (w *blockWords) rows(block int64) []mention {
 	var out []mention
 	for _, part := range []struct {
 		field string
-		words map[string][]int64
+		words wordList
 	}{{"actor:", w.actors}, {"kind:", w.kinds}, {"subject:", w.subjects}} {
 		for _, word := range slices.Sorted(maps.Keys(part.words)) {
-			out = append(out, mention{part.field + word, block, packSeqs(part.words[word])})
+			out = append(out, mention{part.field + word, block, packSeqs(*part.words[word])})
 		}
 	}
 	return out

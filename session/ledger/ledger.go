@@ -12,6 +12,7 @@ package ledger
 
 import (
 	"context"
+	"database/sql"
 	"errors"
 	"fmt"
 	"os"
@@ -56,6 +57,7 @@ type Ledger struct {
 	covered int64    // size of the newest checkpoint
 	broken  error    // set when it is not known what the disk holds
 	unclear *change  // what was being written then
+	insert  *sql.Stmt
 
 	size atomic.Int64 // events known to be durable, readable without the turn
 }
@@ -117,6 +119,10 @@ func (l *Ledger) load(ctx context.Context) error {
 		return err
 	}
 	l.keys, l.edge, l.covered = keys, edge, covered
+	l.insert, err = l.db.PrepareContext(ctx, `INSERT INTO event (seq, body, nodes) VALUES (?, ?, ?)`)
+	if err != nil {
+		return explain("prepare", l.path, err)
+	}
 	return l.indexBlocks(ctx, edge.size)
 }
 

@@ -93,6 +93,9 @@ type row struct {
 // milliseconds.
 const batchRows = 2048
 
+// usualRow is what a row usually takes, bytes; only a guess for the buffer.
+const usualRow = 384
+
 // rows reads up to limit events from the given number on, in order, as they stand:
 // gaps and all. The bodies of one call share memory but not capacity.
 func (s *store) rows(ctx context.Context, from int64, limit int) ([]row, error) {
@@ -102,10 +105,10 @@ func (s *store) rows(ctx context.Context, from int64, limit int) ([]row, error) 
 	}
 	defer rs.Close()
 	out := make([]row, 0, min(limit, batchRows))
-	var held []byte
+	held := make([]byte, 0, min(limit, batchRows)*usualRow)
+	var seq int64
+	var body, nodes sql.RawBytes
 	for rs.Next() {
-		var seq int64
-		var body, nodes sql.RawBytes
 		if err := rs.Scan(&seq, &body, &nodes); err != nil {
 			return nil, err
 		}

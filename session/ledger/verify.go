@@ -77,7 +77,7 @@ func Verify(ctx context.Context, path string, opt VerifyOptions) (Report, error)
 
 // damaged turns the refusal of SQLite to read the file into a finding.
 func damaged(path string, err error) (Report, error) {
-	if code := sqliteCode(err); code != lib.SQLITE_CORRUPT && code != lib.SQLITE_NOTADB && code != lib.SQLITE_ERROR {
+	if sqliteCode(err) == 0 || !isDamage(err) {
 		return Report{}, err
 	}
 	return Report{Path: path, Findings: []*Finding{{-1, "the file is damaged: " + err.Error()}}}, nil
@@ -98,11 +98,68 @@ func (r *Reader) Verify(ctx context.Context, opt VerifyOptions) (Report, error) 
 }
 
 func (r *Reader) verifyFile(ctx context.Context, opt VerifyOptions) (Report, error) {
-	c := newChecker(r.store, opt)
-	if err := c.pages(ctx); err != nil {
-		return c.report, err
+	pages := make(chan pagesReport, 1)
+	go func() { pages <- checkPages(ctx, r.path) }()
+	report, err := newChecker(r.store, opt).run(ctx)
+	p := <-pages
+	for _, said := range p.said {
+		report.Findings = append(report.Findings, &Finding{-1, "the file is damaged: " + said})
 	}
-	return c.run(ctx)
+	return report, errors.Join(err, p.err)
+}
+
+// pagesReport is what SQLite says about the file's structure.
+type pagesReport struct {
+	said []string // nothing when all is well
+	err  error
+}
+
+// checkPages lets SQLite check the structure of the file, through a connection of its
+// own, as it takes a while.
+func checkPages(ctx context.Context, path string) pagesReport {
+	db, err := connectSQLite(ctx, readerDSN(path, readMode(path)))
+	if err != nil {
+		return pagesDamage(path, err)
+	}
+	defer db.Close() // only read from
+	rs, err := db.QueryContext(ctx, `PRAGMA integrity_check(10)`)
+	if err != nil {
+		return pagesDamage(path, err)
+	}
+	defer rs.Close()
+	var p pagesReport
+	for rs.Next() {
+		var said string
+		if err := rs.Scan(&said); err != nil {
+			return pagesDamage(path, err)
+		}
+		if said != "ok" {
+			p.said = append(p.said, said)
+		}
+	}
+	if err := rs.Err(); err != nil {
+		return pagesDamage(path, err)
+	}
+	return p
+}
+
+func pagesDamage(path string, err error) pagesReport {
+	if isDamage(err) {
+		return pagesReport{said: []string{err.Error()}}
+	}
+	return pagesReport{err: explain("verify", path, err)}
+}
+
+// isDamage tells a file that says nonsense from one that cannot be read now.
+func isDamage(err error) bool {
+	if errors.Is(err, context.Canceled) || errors.Is(err, context.DeadlineExceeded) {
+		return false
+	}
+	switch sqliteCode(err) {
+	case 0, lib.SQLITE_CORRUPT, lib.SQLITE_NOTADB, lib.SQLITE_ERROR:
+		return true
+	}
+	return false
 }
 
 // checker carries the verification of one ledger.
@@ -144,36 +201,15 @@ func (c *checker) find(seq int64, format string, args ...any) {
 	}
 }
 
-// pages lets SQLite check the file's structure.
-func (c *checker) pages(ctx context.Context) error {
-	rs, err := c.s.db.QueryContext(ctx, `PRAGMA integrity_check(10)`)
-	if err != nil {
-		return c.broken("pages", err)
-	}
-	defer rs.Close()
-	for rs.Next() {
-		var said string
-		if err := rs.Scan(&said); err != nil {
-			return c.broken("pages", err)
-		}
-		if said != "ok" {
-			c.find(-1, "the file's structure is damaged: %s", said)
-		}
-	}
-	return c.broken("pages", rs.Err())
-}
-
 // broken makes a finding of damage that SQLite reports and gives other errors on.
 func (c *checker) broken(what string, err error) error {
-	switch code := sqliteCode(err); {
+	switch {
 	case err == nil:
 		return nil
-	case errors.Is(err, context.Canceled), errors.Is(err, context.DeadlineExceeded):
-		return err
 	case errors.Is(err, ErrAltered):
 		c.find(-1, "%s: %v", what, err)
 		return nil
-	case code == 0, code == lib.SQLITE_CORRUPT, code == lib.SQLITE_NOTADB, code == lib.SQLITE_ERROR:
+	case isDamage(err):
 		c.find(-1, "the file is damaged (%s): %v", what, err)
 		return nil
 	}
