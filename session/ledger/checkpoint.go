@@ -124,7 +124,8 @@ func (l *Ledger) Checkpoint(ctx context.Context) ([]byte, error) {
 	if err := l.write(ctx, change{next: l.edge, checkpoint: signed}); err != nil {
 		return nil, err
 	}
-	return signed, l.indexBlocks(ctx, l.edge.size)
+	l.catchUp(ctx)
+	return signed, nil
 }
 
 func (l *Ledger) signHead(f *frontier) ([]byte, error) {

@@ -147,6 +147,11 @@ func (w *blockWords) rows(block int64) []mention {
 	return out
 }
 
+// catchUp indexes what can be indexed now. A failure is no news for anybody: an index that
+// lags behind makes queries slower and nothing else, and if the disk is at fault the
+// next event says so.
+func (l *Ledger) catchUp(ctx context.Context) { _ = l.indexBlocks(ctx, l.edge.size) }
+
 // indexBlocks brings the index up to the last complete block, one transaction each.
 // Own turn assumed.
 func (s *store) indexBlocks(ctx context.Context, size int64) error {

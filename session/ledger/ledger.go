@@ -120,10 +120,7 @@ func (l *Ledger) load(ctx context.Context) error {
 	}
 	l.keys, l.edge, l.covered = keys, edge, covered
 	l.insert, err = l.db.PrepareContext(ctx, `INSERT INTO event (seq, body, nodes) VALUES (?, ?, ?)`)
-	if err != nil {
-		return explain("prepare", l.path, err)
-	}
-	return l.indexBlocks(ctx, edge.size)
+	return explain("prepare", l.path, err)
 }
 
 // Size gives the number of events.
@@ -150,11 +147,10 @@ func (l *Ledger) Close() error {
 	if l.closed {
 		return nil
 	}
-	var err error
 	if l.broken == nil {
-		err = l.indexBlocks(context.Background(), l.edge.size)
+		l.catchUp(context.Background())
 	}
-	return errors.Join(err, l.release())
+	return l.release()
 }
 
 var errClosed = errors.New("ledger is closed")

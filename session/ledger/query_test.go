@@ -2,6 +2,7 @@ package ledger
 
 import (
 	"errors"
+	"flag"
 	"fmt"
 	"slices"
 	"testing"
@@ -120,10 +121,9 @@ func TestSnapshots(t *testing.T) {
 // TestAppendReopenModel drives a ledger through random appends, failures, checkpoints and
 // reopenings and compares it with a list.
 func TestAppendReopenModel(t *testing.T) {
-	dirs := 0
+	fewerChecks(t, "25")
 	rapid.Check(t, func(rt *rapid.T) {
-		dirs++
-		opt := found(t, fmt.Sprint(t.TempDir()))
+		opt := found(t, t.TempDir())
 		disk := &failAt{}
 		opt.fault = disk.strike
 		l, err := Open(t.Context(), opt)
@@ -180,5 +180,22 @@ func TestAppendReopenModel(t *testing.T) {
 				}
 			},
 		})
+	})
+}
+
+// fewerChecks keeps a slow property test short, unless more checks were asked for.
+func fewerChecks(t *testing.T, n string) {
+	t.Helper()
+	f := flag.Lookup("rapid.checks")
+	if f.Value.String() != f.DefValue {
+		return
+	}
+	if err := f.Value.Set(n); err != nil {
+		t.Fatal(err)
+	}
+	t.Cleanup(func() {
+		if err := f.Value.Set(f.DefValue); err != nil {
+			t.Fatal(err)
+		}
 	})
 }

@@ -59,6 +59,9 @@ func (l *Ledger) recover(ctx context.Context) (happened bool, err error) {
 		return false, err
 	}
 	happened, err = l.found(ctx, before)
+	if err == nil && happened {
+		err = l.fold(ctx)
+	}
 	if err != nil {
 		return false, err
 	}
@@ -68,8 +71,7 @@ func (l *Ledger) recover(ctx context.Context) (happened bool, err error) {
 }
 
 // reopen closes the connection, whatever it says, and loads the file anew. The lock
-// file stays held. The log is folded into the database and synced: what is read after
-// a failed sync could otherwise be only in the system's memory.
+// file stays held.
 func (l *Ledger) reopen(ctx context.Context) error {
 	if err := l.at(beforeReopen); err != nil {
 		return err
@@ -78,12 +80,18 @@ func (l *Ledger) reopen(ctx context.Context) error {
 	if err := l.load(ctx); err != nil {
 		return errors.Join(closing, err, l.disconnect())
 	}
-	var busy, logged, moved int64
-	row := l.db.QueryRowContext(ctx, `PRAGMA wal_checkpoint(TRUNCATE)`)
-	if err := row.Scan(&busy, &logged, &moved); err != nil || busy != 0 {
-		return explain("sync", l.path, errors.Join(err, fmt.Errorf("fold the log: busy %d", busy)))
-	}
 	return l.at(afterReopen)
+}
+
+// fold moves the write-ahead log into the database and syncs that. What is read back after
+// a failed sync may be only in the system's memory; this writes it once more.
+func (l *Ledger) fold(ctx context.Context) error {
+	var busy, logged, moved int64
+	err := l.db.QueryRowContext(ctx, `PRAGMA wal_checkpoint(TRUNCATE)`).Scan(&busy, &logged, &moved)
+	if err == nil && busy != 0 {
+		err = fmt.Errorf("fold the log: busy %d", busy)
+	}
+	return explain("sync", l.path, err)
 }
 
 // found says whether the unclear change is in the file. before is the size that was

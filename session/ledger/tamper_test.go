@@ -212,6 +212,7 @@ func TestGuardsAreMissed(t *testing.T) {
 // TestEveryBitOfEveryRow flips each bit of each stored value of a small ledger, in every
 // table, and demands that verification finds it.
 func TestEveryBitOfEveryRow(t *testing.T) {
+	t.Parallel()
 	s := makeSample(t, 2)
 	c := s.copy(t)
 	db, err := sql.Open("sqlite", "file:"+c.path+"?_pragma=synchronous(0)&_pragma=journal_mode(MEMORY)&_pragma=ignore_check_constraints(1)")
@@ -305,6 +306,7 @@ func flip(t *testing.T, db *sql.DB, set string, args ...any) {
 
 // TestEveryBitOfTheIndex does the same with the index of a block of events.
 func TestEveryBitOfTheIndex(t *testing.T) {
+	t.Parallel()
 	s := makeSample(t, 1100)
 	db, err := sql.Open("sqlite", "file:"+s.path+"?_pragma=synchronous(0)&_pragma=journal_mode(MEMORY)")
 	if err != nil {

@@ -77,6 +77,7 @@ func bodySum(body []byte) string {
 // ledger and verifies it: every acknowledged event is there with its bytes, no number is
 // missing and none is there twice, and what was there before is still there.
 func TestTorture(t *testing.T) {
+	t.Parallel()
 	var opt Options
 	var acked map[int64]string
 	total, unacked := 0, int64(0)
