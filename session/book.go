@@ -20,12 +20,16 @@ import (
 	"time"
 )
 
-// Book is everything the ledger says: the register of burettes and all runs.
+// Book is everything the ledger says: the register of burettes and all runs. Every
+// run has a summary; the runs themselves are there as long as they are worked on.
+// One that is closed can be fetched again from its own events: see Shelve and Fetch.
 type Book struct {
-	Burettes map[string]*Entry
-	Runs     map[string]*Run
-	Order    []string // the runs' names in the order in which they were opened
-	Next     int64    // number of the next event
+	Burettes  map[string]*Entry
+	Runs      map[string]*Run
+	Summaries map[string]*Summary
+	Order     []string // the runs' names in the order in which they were opened
+	Next      int64    // number of the next event
+	Unclean   bool     // the daemon started and has not stopped
 }
 
 // Entry is a burette in the register with its history of changes.
@@ -37,7 +41,7 @@ type Entry struct {
 
 // NewBook gives an empty book.
 func NewBook() *Book {
-	return &Book{Burettes: map[string]*Entry{}, Runs: map[string]*Run{}}
+	return &Book{Burettes: map[string]*Entry{}, Runs: map[string]*Run{}, Summaries: map[string]*Summary{}}
 }
 
 // BuretteBody is the body of the events of the register.
@@ -62,11 +66,29 @@ func (b *Book) Apply(line []byte) error {
 		return b.applyOpened(e, line)
 	case BuretteRegistered, BuretteChanged:
 		return b.applyBurette(e)
+	case DaemonStarted, DaemonStopped:
+		b.Unclean = e.Kind == DaemonStarted
 	}
-	if run := b.Runs[e.Subject]; run != nil && e.concernsRun() {
-		return run.apply(e, line)
+	if !e.concernsRun() {
+		return nil
 	}
-	return nil
+	return b.applyToRun(e, line)
+}
+
+// applyToRun brings a run and its summary in step.
+func (b *Book) applyToRun(e Event, line []byte) error {
+	summary := b.Summaries[e.Subject]
+	if summary == nil {
+		return nil // a weight that settled while no run was open
+	}
+	if run := b.Runs[e.Subject]; run != nil {
+		if err := run.apply(e, line); err != nil {
+			return err
+		}
+		*summary = run.Summary()
+		return nil
+	}
+	return summary.apply(e)
 }
 
 // concernsRun says whether an event of this kind is part of its subject's run.
@@ -88,6 +110,8 @@ func (b *Book) applyOpened(e Event, line []byte) error {
 		}
 		run.extendHash(line)
 		b.Runs[run.ID] = run
+		summary := run.Summary()
+		b.Summaries[run.ID] = &summary
 		b.Order = append(b.Order, run.ID)
 		return nil
 	})
@@ -192,8 +216,8 @@ func (b *Book) checkSupersedes(q Request) error {
 	if q.Supersedes == "" {
 		return nil
 	}
-	old := b.Runs[q.Supersedes]
-	if old == nil || old.State != Published || old.Opening.Burette.Name != q.Burette {
+	old := b.Summaries[q.Supersedes]
+	if old == nil || old.State != Published || old.Burette != q.Burette {
 		return Refuse("cannot-supersede", fmt.Sprintf("%q is no published run of burette %s.", q.Supersedes, q.Burette), "Name the published run that the new one replaces.")
 	}
 	if old.SupersededBy != "" {
@@ -206,7 +230,7 @@ func (b *Book) checkSupersedes(q Request) error {
 func (b *Book) runName(burette string, local time.Time) string {
 	for n := 1; ; n++ {
 		name := fmt.Sprintf("%s-%s-%d", burette, local.Format("20060102"), n)
-		if b.Runs[name] == nil {
+		if b.Summaries[name] == nil {
 			return name
 		}
 	}
@@ -215,18 +239,22 @@ func (b *Book) runName(burette string, local time.Time) string {
 // OpenRunAt gives the run that a station's weights belong to: the open one, nil
 // when there is none. A suspended run leaves its station free.
 func (b *Book) OpenRunAt(station string) *Run {
-	for i := len(b.Order) - 1; i >= 0; i-- {
-		if run := b.Runs[b.Order[i]]; run.State == Open && run.Opening.Station == station {
+	for _, run := range b.Runs {
+		if run.State == Open && run.Opening.Station == station {
 			return run
 		}
 	}
 	return nil
 }
 
-// Run gives a run by its name, or says that there is none.
+// Run gives a run by its name, or says that there is none. One that lies on the shelf
+// has to be fetched first.
 func (b *Book) Run(id string) (*Run, error) {
 	if run := b.Runs[id]; run != nil {
 		return run, nil
+	}
+	if b.Summaries[id] != nil {
+		return nil, Refuse("run-closed", fmt.Sprintf("Run %s is %s.", id, b.Summaries[id].State), "Open a new run instead.")
 	}
 	return nil, Refuse("unknown-run", fmt.Sprintf("There is no run %q.", id), "Check the name, or list the runs.")
 }
@@ -242,19 +270,20 @@ func (b *Book) BuretteList() []*Entry {
 }
 
 // CurveInForce gives the run whose curve counted for a burette at a moment: the
-// latest one published by then. What was superseded later still counted until then.
-func (b *Book) CurveInForce(burette string, at time.Time) (*Run, error) {
+// latest one finished by then that was published. What was superseded later still
+// counted until then.
+func (b *Book) CurveInForce(burette string, at time.Time) (*Summary, error) {
 	if b.Burettes[burette] == nil {
 		return nil, unknownBurette(burette)
 	}
-	var in *Run
+	var in *Summary
 	for _, id := range b.Order {
-		run := b.Runs[id]
-		if run.Opening.Burette.Name != burette || run.Publishing == nil || run.FinishedAt.After(at) {
+		s := b.Summaries[id]
+		if s.Burette != burette || s.State != Published || s.FinishedAt.After(at) {
 			continue
 		}
-		if in == nil || !run.FinishedAt.Before(in.FinishedAt.Time) {
-			in = run
+		if in == nil || !s.FinishedAt.Before(in.FinishedAt.Time) {
+			in = s
 		}
 	}
 	if in == nil {

@@ -112,7 +112,7 @@ func (p Plan) deliveries() []*Delivery {
 		for i, point := range p.PointsML {
 			d := &Delivery{Number: len(all) + 1, Replicate: rep, FromML: from, PointML: point}
 			if i > 0 {
-				d.follows = d.Number - 1
+				d.Follows = d.Number - 1
 			}
 			all = append(all, d)
 			if p.ReadingPattern == Stepwise {

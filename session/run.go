@@ -73,7 +73,7 @@ type Delivery struct {
 	Water     *WaterTemp
 	Void      *Change
 	Answered  *Change // the doubt about it that somebody answered
-	follows   int     // the delivery whose end this one may start from; 0: none
+	Follows   int     // the delivery whose end this one may start from; 0: none
 }
 
 // Weighing is one settled weight that was taken.
@@ -172,7 +172,7 @@ func (r *Run) Delivery(number int) *Delivery {
 // the end reading of the delivery before. Nil when it is still to be made.
 func (r *Run) StartOf(d *Delivery) *Reading {
 	if d.Start == nil && r.sharesStart(d) {
-		return r.Delivery(d.follows).End
+		return r.Delivery(d.Follows).End
 	}
 	return d.Start
 }
@@ -181,7 +181,7 @@ func (r *Run) StartOf(d *Delivery) *Reading {
 // a running vessel the after-weight of the delivery before.
 func (r *Run) BeforeOf(d *Delivery) *Weighing {
 	if d.Before == nil && r.sharesBefore(d) {
-		return r.Delivery(d.follows).After
+		return r.Delivery(d.Follows).After
 	}
 	return d.Before
 }
@@ -189,12 +189,12 @@ func (r *Run) BeforeOf(d *Delivery) *Weighing {
 // sharesStart: the burette was not refilled in between. After a voided delivery
 // that has no end reading the level is unknown, so a new start reading is needed.
 func (r *Run) sharesStart(d *Delivery) bool {
-	before := r.Delivery(d.follows)
+	before := r.Delivery(d.Follows)
 	return r.Opening.Plan.ReadingPattern == Stepwise && before != nil && (before.Void == nil || before.End != nil)
 }
 
 func (r *Run) sharesBefore(d *Delivery) bool {
-	before := r.Delivery(d.follows)
+	before := r.Delivery(d.Follows)
 	return r.Opening.Plan.WeighingPattern == Running && before != nil && (before.Void == nil || before.After != nil)
 }
 

@@ -302,3 +302,34 @@ func TestAnotherBalanceIsRefused(t *testing.T) {
 		t.Errorf("seen %+v: the other balance's weight was not refused", r.Seen)
 	}
 }
+
+func fromRaw(raw Raw) (decimal.Number, error) {
+	return decimal.Parse(strings.TrimSpace(strings.TrimSuffix(strings.TrimSpace(strings.TrimPrefix(string(raw), "N     +")), "g")))
+}
+
+func TestARunRecomputesFromItsRawBytes(t *testing.T) {
+	h := newHouse(t)
+	r := h.open(Plan{WeighingPattern: Running})
+	h.work(r)
+	h.must(r.Finish("M. Berg", false))
+	lines := h.lines[r.First:]
+	again, found, err := Recompute(lines, fromRaw)
+	if err != nil || len(found) != 0 {
+		t.Fatalf("differences %v, %v; want none", found, err)
+	}
+	want, _ := json.Marshal(r.Document())
+	got, _ := json.Marshal(again.Document())
+	if string(got) != string(want) {
+		t.Error("the recomputed document differs")
+	}
+	bad := append([][]byte{}, lines...)
+	for i, line := range bad {
+		if changed := strings.Replace(string(line), `"mass_g":"45.1234"`, `"mass_g":"45.1244"`, 1); changed != string(line) {
+			bad[i] = []byte(changed)
+			break
+		}
+	}
+	if _, found, err = Recompute(bad, fromRaw); err != nil || len(found) == 0 {
+		t.Errorf("a changed weight was not found: %v", err)
+	}
+}

@@ -25,6 +25,13 @@ type Record interface {
 	Append(ctx context.Context, drafts ...func(seq int64) ([]byte, error)) ([][]byte, error)
 	// Replay hands over every stored line from number from on.
 	Replay(ctx context.Context, from int64, each func(line []byte) error) error
+	// RunLines gives the stored lines of one run, in order.
+	RunLines(ctx context.Context, id string) ([][]byte, error)
+	// LoadSnapshot gives a state of the book that was kept, as of the events before
+	// next; found is false when there is none that can be trusted.
+	LoadSnapshot(ctx context.Context) (state []byte, next int64, found bool, err error)
+	// SaveSnapshot keeps one.
+	SaveSnapshot(ctx context.Context, state []byte, next int64) error
 }
 
 // Clock is where the desk takes the time from.
@@ -44,17 +51,19 @@ type Desk struct {
 	done    chan struct{}
 	crier   *crier
 	steps   stepWatch
+	kept    int64 // number of events that the newest snapshot covers
 	trouble error // the last append failed with this
 }
 
-// New gives a desk whose book is what the record says. It reads the whole record.
+// New gives a desk whose book is what the record says. It reads the events since the
+// snapshot that was kept last, or all of them.
 func New(ctx context.Context, record Record, clock Clock, log zerolog.Logger) (*Desk, error) {
 	d := &Desk{
 		record: record, clock: clock, log: log, book: session.NewBook(),
 		orders: make(chan func()), done: make(chan struct{}), crier: newCrier(),
 	}
-	if err := record.Replay(ctx, 0, d.book.Apply); err != nil {
-		return nil, fmt.Errorf("replay ledger: %w", err)
+	if err := d.recall(ctx); err != nil {
+		return nil, err
 	}
 	return d, nil
 }
@@ -195,6 +204,7 @@ func (d *Desk) apply(lines [][]byte) ([]session.Event, error) {
 		events = append(events, e)
 		d.crier.cry(Notice{Event: &e})
 	}
+	d.keep()
 	return events, nil
 }
 

@@ -11,7 +11,7 @@ func (d *Desk) Due(ctx context.Context) ([]string, error) {
 	var due []string
 	err := d.View(ctx, func(b *session.Book) error {
 		for _, id := range b.Order {
-			if b.Runs[id].IsDue() {
+			if run := b.Runs[id]; run != nil && run.IsDue() {
 				due = append(due, id)
 			}
 		}
