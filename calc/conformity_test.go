@@ -15,8 +15,8 @@ import (
 // handCurve is a curve with given corrections and covariance, as if a calibration had
 // given it, with k = 2.
 func handCurve(readings, corrections []float64, covariance [][]float64) *Curve {
-	c := &Curve{CovarianceML2: covariance, Birge: 1, BridgeNu: DegreesOfFreedom(math.Inf(1)), in: DefaultInputs(), random: covariance}
-	c.in.CoverageProbability = 0.954499736103642 // k = 2
+	c := &Curve{CovarianceML2: covariance, Birge: 1, BridgeNu: DegreesOfFreedom(math.Inf(1)), Inputs: DefaultInputs(), RandomML2: covariance}
+	c.Inputs.CoverageProbability = 0.954499736103642 // k = 2
 	for i, r := range readings {
 		c.Points = append(c.Points, Point{ReadingML: r, CorrectionML: corrections[i]})
 	}

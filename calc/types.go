@@ -97,26 +97,3 @@ type Point struct {
 	K            float64          `json:"k"`             // coverage factor
 	ExpandedML   float64          `json:"U_mL"`          // K × UML, mL
 }
-
-// Residual is how far one delivery lies from the curve.
-type Residual struct {
-	Delivery   int     `json:"delivery"`
-	ResidualML float64 `json:"residual_mL"` // observed minus fitted, mL
-}
-
-// Curve is C(v), the correction from the first mark to the reading v: piecewise
-// linear on the test points, zero at the first mark.
-type Curve struct {
-	FirstML            float64          `json:"first_mL"` // the first mark, where the correction is 0, mL
-	Points             []Point          `json:"points"`   // rising
-	CovarianceML2      [][]float64      `json:"covariance_mL2"`
-	Chi2               float64          `json:"chi2"`
-	Nu                 int              `json:"nu"`
-	Birge              float64          `json:"birge"`
-	BridgeRateML2PerML float64          `json:"bridge_rate_mL2_per_mL"`
-	BridgeNu           DegreesOfFreedom `json:"bridge_nu"`
-	Residuals          []Residual       `json:"residuals"`
-
-	in     Inputs
-	random [][]float64 // the part of the covariance that comes from single facts, mL²
-}
