@@ -23,6 +23,9 @@ type Record interface {
 	// Append makes the drafts durable, all or none, and gives the lines as stored.
 	// A draft is encoded when its number is known.
 	Append(ctx context.Context, drafts ...func(seq int64) ([]byte, error)) ([][]byte, error)
+	// Recover tries to bring a record back that failed, and gives the lines whose fate
+	// was unclear and that turned out to be stored. On a sound record it does nothing.
+	Recover(ctx context.Context) ([][]byte, error)
 	// Replay hands over every stored line from number from on.
 	Replay(ctx context.Context, from int64, each func(line []byte) error) error
 	// RunLines gives the stored lines of one run, in order.
@@ -154,6 +157,9 @@ func (d *Desk) write(actor session.Actor, drafts []session.Draft) ([]session.Eve
 	if len(drafts) == 0 {
 		return nil, nil
 	}
+	if err := d.heal(); err != nil {
+		return nil, err
+	}
 	now, running := d.clock.Now(), d.clock.Running()
 	if step := d.steps.check(now, running); step != nil {
 		drafts = append([]session.Draft{{Kind: session.ClockStepped, Body: step}}, drafts...)
@@ -169,6 +175,31 @@ func (d *Desk) write(actor session.Actor, drafts []session.Draft) ([]session.Eve
 	}
 	d.recovered()
 	return d.apply(lines)
+}
+
+// heal brings the record back after a fault, and the book in step with what it turns
+// out to hold.
+func (d *Desk) heal() error {
+	if d.trouble == nil {
+		return nil
+	}
+	lines, err := d.record.Recover(context.Background())
+	if err != nil {
+		return err
+	}
+	_, err = d.apply(lines)
+	return err
+}
+
+// Heal tries to bring the record back after a fault, without waiting for an order.
+func (d *Desk) Heal(ctx context.Context) error {
+	var err error
+	wait := d.at(ctx, func() {
+		if err = d.heal(); err == nil {
+			d.recovered()
+		}
+	})
+	return errors.Join(wait, err)
 }
 
 // encoder gives the function that makes an event's line once its number is known.

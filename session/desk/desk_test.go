@@ -16,19 +16,18 @@ import (
 
 // memory is a record that lives in memory and can be told to fail.
 type memory struct {
-	mu    sync.Mutex
-	lines [][]byte
-	fail  error
-	state []byte
-	next  int64
+	mu      sync.Mutex
+	lines   [][]byte
+	fail    error
+	happens bool     // whether the failing append stores its lines
+	late    [][]byte // stored by an append that answered with fail
+	state   []byte
+	next    int64
 }
 
 func (m *memory) Append(_ context.Context, drafts ...func(int64) ([]byte, error)) ([][]byte, error) {
 	m.mu.Lock()
 	defer m.mu.Unlock()
-	if m.fail != nil {
-		return nil, m.fail
-	}
 	var out [][]byte
 	for _, d := range drafts {
 		line, err := d(int64(len(m.lines) + len(out)))
@@ -37,8 +36,26 @@ func (m *memory) Append(_ context.Context, drafts ...func(int64) ([]byte, error)
 		}
 		out = append(out, line)
 	}
+	if m.fail != nil {
+		if m.happens {
+			m.late = out
+		}
+		return nil, m.fail
+	}
 	m.lines = append(m.lines, out...)
 	return out, nil
+}
+
+// Recover gives what an append that seemed to fail stored all the same.
+func (m *memory) Recover(context.Context) ([][]byte, error) {
+	m.mu.Lock()
+	defer m.mu.Unlock()
+	if m.fail != nil {
+		return nil, m.fail
+	}
+	late := m.late
+	m.lines, m.late = append(m.lines, late...), nil
+	return late, nil
 }
 
 func (m *memory) Replay(_ context.Context, from int64, each func([]byte) error) error {
@@ -208,5 +225,26 @@ func TestAfterAStopTheBookIsTheSame(t *testing.T) {
 	})
 	if err != nil {
 		t.Error(err)
+	}
+}
+
+func TestWhatHappenedInSpiteOfAFaultIsAppliedOnce(t *testing.T) {
+	m := &memory{fail: errors.New("I/O error"), happens: true}
+	d := startDesk(t, m, testClock())
+	if _, err := d.Do(t.Context(), anna, register); err == nil {
+		t.Fatal("the fault was not reported")
+	}
+	m.fail = nil
+	if err := d.Heal(t.Context()); err != nil {
+		t.Fatal(err)
+	}
+	err := d.View(t.Context(), func(b *session.Book) error {
+		if b.Burettes["B-07"] == nil || b.Next != 1 {
+			t.Errorf("after the fault: burette %v, %d events", b.Burettes["B-07"], b.Next)
+		}
+		return nil
+	})
+	if err != nil || d.Trouble(t.Context()) != nil {
+		t.Error(err, d.Trouble(t.Context()))
 	}
 }
