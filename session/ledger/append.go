@@ -5,7 +5,6 @@ import (
 	"database/sql"
 	"errors"
 	"fmt"
-	"time"
 
 	"golang.org/x/mod/sumdb/tlog"
 	"tenthmark/session"
@@ -37,10 +36,6 @@ func (l *Ledger) at(s step) error {
 // signEvery is how many events may stand behind the newest checkpoint; then one is
 // signed with the next event. It bounds what a start has to rehash.
 const signEvery = 8192
-
-// commitPatience is how long a commit may take before it counts as failed. A commit is
-// never interrupted because its caller lost interest: it would be unclear what happened.
-const commitPatience = 30 * time.Second
 
 // Append stores the drafts as the next events, all or none. When it returns without
 // error they are on disk. On an error nothing is recorded, unless the error has the
@@ -118,7 +113,7 @@ func (l *Ledger) write(ctx context.Context, c change) error {
 	if err := ctx.Err(); err != nil {
 		return err
 	}
-	ctx = context.WithoutCancel(ctx)
+	ctx = context.WithoutCancel(ctx) // an interrupted commit would leave open what happened
 	cause := l.transact(ctx, c)
 	if cause == nil {
 		l.take(c)

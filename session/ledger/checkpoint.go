@@ -63,6 +63,12 @@ func parseHead(text string) (Head, error) {
 	return h, checkOrigin(h.Origin)
 }
 
+// readUnsigned reads what a checkpoint says, whoever signed it.
+func readUnsigned(signed []byte) (Head, error) {
+	text, _, _ := strings.Cut(string(signed), "\n\n")
+	return parseHead(text + "\n")
+}
+
 func parseSize(text string) (int64, error) {
 	n, err := strconv.ParseInt(text, 10, 64)
 	if err != nil || n < 0 || strconv.FormatInt(n, 10) != text {
@@ -237,8 +243,7 @@ func (s *store) checkTail(ctx context.Context, keys keyring) (frontier, int64, e
 }
 
 func (s *store) checkNewest(signed []byte, keys keyring) (Head, error) {
-	text, _, _ := strings.Cut(string(signed), "\n\n")
-	head, err := parseHead(text + "\n")
+	head, err := readUnsigned(signed)
 	if err != nil {
 		return Head{}, &Finding{-1, "the newest checkpoint cannot be read"}
 	}

@@ -230,16 +230,32 @@ func TestExportAndSegments(t *testing.T) {
 		t.Fatal(err)
 	}
 	key := l.PublicKey()
-	if beyond, err := CheckExport(bytes.NewReader(whole.Bytes()), signed, key); err != nil || beyond != 0 {
-		t.Errorf("good export: %d beyond (%v)", beyond, err)
+	check := func(lines string) Report {
+		r, err := VerifyExport(strings.NewReader(lines), signed, VerifyOptions{PublicKey: key})
+		if err != nil {
+			t.Fatal(err)
+		}
+		return r
 	}
-	for _, tt := range []struct{ name, from, to string }{
-		{"a digit", `"n":44`, `"n":45`},
-		{"a cut tail", whole.String()[whole.Len()-300:], ""},
+	if r := check(whole.String()); !r.OK() || r.Events != 91 || r.Covered != 91 || !r.Trusted {
+		t.Errorf("good export: %+v: %v", r, r.First())
+	}
+	if r := check(whole.String() + string(line(91, "daemon", "x", "", nil)) + "\n"); !r.OK() || r.Events != 92 || r.Covered != 91 {
+		t.Errorf("an export with a later event: %+v: %v", r, r.First())
+	}
+	lines := strings.SplitAfter(whole.String(), "\n")
+	for _, tt := range []struct {
+		name, lines string
+		first       int64
+	}{
+		{"a digit", strings.Replace(whole.String(), `"n":44`, `"n":45`, 1), -1},
+		{"a cut tail", strings.Join(lines[:80], ""), 80},
+		{"half a line", whole.String()[:whole.Len()-9], 90},
+		{"a line removed", strings.Join(append(append([]string{}, lines[:7]...), lines[8:]...), ""), 7},
+		{"nothing", "", 0},
 	} {
-		bad := strings.Replace(whole.String(), tt.from, tt.to, 1)
-		if _, err := CheckExport(strings.NewReader(bad), signed, key); err == nil {
-			t.Errorf("%s: not found", tt.name)
+		if r := check(tt.lines); r.OK() || r.First().Seq != tt.first {
+			t.Errorf("%s: first finding %v, want event %d", tt.name, r.First(), tt.first)
 		}
 	}
 	if err := l.Export(t.Context(), io.Discard, 5, 10_000); err == nil {

@@ -8,8 +8,8 @@ import (
 	"io"
 	"os"
 	"path/filepath"
+	"time"
 
-	"golang.org/x/mod/sumdb/tlog"
 	"tenthmark/session"
 )
 
@@ -46,14 +46,13 @@ type Segment struct {
 // ExportSegment writes the events from the given number on into dir, as NAME.jsonl with
 // the newest checkpoint as NAME.checkpoint, and gives the segment; with no new event it
 // gives an empty one. The segments of a ledger, put one after another, are its whole
-// record and can be checked with CheckExport without the database.
+// record and can be checked with VerifyExport without the database.
 func (l *Ledger) ExportSegment(ctx context.Context, dir string, from int64) (Segment, error) {
 	signed, err := l.Checkpoint(ctx)
 	if err != nil {
 		return Segment{}, err
 	}
-	text := signed
-	head, err := ReadCheckpoint(text, l.PublicKey())
+	head, err := ReadCheckpoint(signed, l.PublicKey())
 	if err != nil {
 		return Segment{}, err
 	}
@@ -103,35 +102,44 @@ func writePublished(path string, fill func(io.Writer) error) error {
 	return syncFolder(path)
 }
 
-// CheckExport recomputes the tree from lines of events and compares it with a signed
-// checkpoint. The lines must begin with event 0 and may reach beyond the checkpoint;
-// how many do is returned.
-func CheckExport(lines io.Reader, signed []byte, publicKey string) (beyond int64, err error) {
-	head, err := ReadCheckpoint(signed, publicKey)
+// VerifyExport checks lines of events, beginning with event 0, as Verify checks a ledger:
+// the tree is recomputed from the lines and compared with the signed checkpoint, which
+// may be older than the last line, and with the ones in opt. Nothing else is needed, so
+// it also checks what a daemon hands out.
+func VerifyExport(lines io.Reader, signed []byte, opt VerifyOptions) (Report, error) {
+	began := time.Now()
+	c := newChecker(newStore("export"), opt)
+	c.bare = true
+	head, err := readUnsigned(signed)
 	if err != nil {
-		return 0, err
+		return c.report, err
 	}
+	c.stored = []sizedNote{{head.Size, signed}}
+	if err := c.readOutside(); err != nil {
+		return c.report, err
+	}
+	if err := c.lines(lines); err != nil {
+		return c.report, err
+	}
+	c.conclude()
+	c.report.Elapsed = time.Since(began)
+	return c.report, nil
+}
+
+// lines checks each line as the next event.
+func (c *checker) lines(lines io.Reader) error {
 	in := bufio.NewReaderSize(lines, MaxBody+2)
-	var edge frontier
 	for {
 		text, err := in.ReadSlice('\n')
-		if errors.Is(err, io.EOF) && len(text) == 0 {
-			break
+		switch {
+		case errors.Is(err, io.EOF) && len(text) == 0:
+			return nil
+		case errors.Is(err, io.EOF), errors.Is(err, bufio.ErrBufferFull):
+			c.find(c.edge.size, "is not a whole line")
+			return nil
+		case err != nil:
+			return fmt.Errorf("read event %d: %w", c.edge.size, err)
 		}
-		if err != nil {
-			return 0, fmt.Errorf("event %d: %w", edge.size, err)
-		}
-		body := text[:len(text)-1]
-		if h, err := parseRaw(body); err != nil || h.seq != edge.size {
-			return 0, altered(edge.size, "is missing or out of order")
-		}
-		edge.push(tlog.RecordHash(body), nil)
-		if edge.size == head.Size && edge.root() != head.Root {
-			return 0, &Finding{-1, fmt.Sprintf("the first %d events do not fit the signed checkpoint", head.Size)}
-		}
+		c.event(row{seq: c.edge.size, body: text[:len(text)-1]})
 	}
-	if edge.size < head.Size {
-		return 0, altered(edge.size, fmt.Sprintf("is missing: the checkpoint speaks of %d events", head.Size))
-	}
-	return edge.size - head.Size, nil
 }

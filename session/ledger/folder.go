@@ -9,6 +9,7 @@ import (
 	"errors"
 	"fmt"
 	"io"
+	"maps"
 	"os"
 	"path/filepath"
 	"slices"
@@ -168,8 +169,7 @@ func proven(line []byte, e EventProof, head Head) string {
 }
 
 // documents compares files of the folder with the hashes that an event's content names
-// under "documents": an object from file name to hexadecimal SHA-256, or a list of
-// objects with "name" and "sha256".
+// under "documents" or "files": an object from file name to hexadecimal SHA-256.
 func (c *folderCheck) documents(line []byte, seq int64) {
 	for name, want := range documentsIn(line) {
 		got, err := fileSum(filepath.Join(c.dir, filepath.Base(name)))
@@ -187,23 +187,17 @@ func (c *folderCheck) documents(line []byte, seq int64) {
 func documentsIn(line []byte) map[string]string {
 	var as struct {
 		Documents json.RawMessage `json:"documents"`
+		Files     json.RawMessage `json:"files"`
 	}
-	if fillInto(line, &as) != nil || as.Documents == nil {
+	if fillInto(line, &as) != nil {
 		return nil
 	}
 	named := map[string]string{}
-	if json.Unmarshal(as.Documents, &named) == nil {
-		return named
-	}
-	var list []struct {
-		Name   string `json:"name"`
-		SHA256 string `json:"sha256"`
-	}
-	if json.Unmarshal(as.Documents, &list) != nil {
-		return nil
-	}
-	for _, d := range list {
-		named[d.Name] = d.SHA256
+	for _, list := range []json.RawMessage{as.Documents, as.Files} {
+		var some map[string]string
+		if list != nil && json.Unmarshal(list, &some) == nil {
+			maps.Copy(named, some)
+		}
 	}
 	return named
 }

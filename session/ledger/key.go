@@ -237,3 +237,23 @@ func ReadPublicKey(path string) (string, error) {
 	}
 	return key, nil
 }
+
+// NamedKey gives the public key that an event brings: the founding's or a key change's,
+// "" for every other event.
+func NamedKey(e Entry) (string, error) {
+	h, err := parseRaw(e.Body)
+	if err != nil {
+		return "", err
+	}
+	switch string(h.kind) {
+	case KindCreated:
+		var c Created
+		err = fillInto(e.Body, &c)
+		return c.PublicKey, err
+	case KindKeyChanged:
+		var c KeyChanged
+		err = fillInto(e.Body, &c)
+		return c.New, err
+	}
+	return "", nil
+}
