@@ -58,7 +58,7 @@ func TitrantFactor(in Inputs, tempC float64) (factor, slopePerC float64, err err
 	if err != nil {
 		return 0, 0, fmt.Errorf("titrant, reference temperature: %w", err)
 	}
-	rho, byTempC, _ := waterFormulas[in.WaterDensity](tempC, normalPressureHPa)
+	rho, byTempC, _ := waterFormulas[in.WaterDensity].density(tempC, normalPressureHPa)
 	glass := 1 + in.ExpansionPerC*(tempC-in.ReferenceTempC)
 	slopePerC = byTempC/rho + in.ExpansionPerC/glass
 	return glass * rho / rhoRef, slopePerC, nil
