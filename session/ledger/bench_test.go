@@ -120,6 +120,17 @@ func BenchmarkVerify(b *testing.B) {
 			mustClose(b, l)
 		}
 	})
+	for _, f := range []Filter{{Subject: "B-03-20261201-1"}, {Kind: "reading", Actor: "operator:anna"}, {Subject: "nobody"}} {
+		b.Run(fmt.Sprintf("what=search/for=%s%s%s/events=%d", f.Subject, f.Kind, f.Actor, *benchEvents), func(b *testing.B) {
+			l := open(b, opt)
+			f.After, f.Limit = -1, 1000
+			for b.Loop() {
+				if _, err := l.Events(b.Context(), f); err != nil {
+					b.Fatal(err)
+				}
+			}
+		})
+	}
 	b.Run(fmt.Sprintf("what=replay/events=%d", *benchEvents), func(b *testing.B) {
 		for b.Loop() {
 			replayAll(b, opt)
@@ -127,7 +138,7 @@ func BenchmarkVerify(b *testing.B) {
 	})
 }
 
-// readAndHash is the yardstick: each row's body read once and hashed once.
+// readAndHash is the yardstick: every row read once and its event's bytes hashed once.
 func readAndHash(b *testing.B, path string) {
 	b.Helper()
 	db, err := connectSQLite(b.Context(), readerDSN(path, "ro"))
@@ -135,16 +146,16 @@ func readAndHash(b *testing.B, path string) {
 		b.Fatal(err)
 	}
 	defer mustClose(b, db)
-	rows, err := db.Query(`SELECT seq, body FROM event ORDER BY seq`)
+	rows, err := db.Query(`SELECT seq, body, nodes FROM event ORDER BY seq`)
 	if err != nil {
 		b.Fatal(err)
 	}
 	defer rows.Close()
 	n := 0
+	var seq int64
+	var body, nodes sql.RawBytes
 	for rows.Next() {
-		var seq int64
-		var body sql.RawBytes
-		if err := rows.Scan(&seq, &body); err != nil {
+		if err := rows.Scan(&seq, &body, &nodes); err != nil {
 			b.Fatal(err)
 		}
 		_ = sha256.Sum256(body)

@@ -15,11 +15,17 @@ import (
 const blockEvents = 1024
 
 // indexedBlocks gives the number of blocks that are in the index. Every event has an
-// actor, a kind and a subject, so a block without a row is not there.
+// actor, so a block without a row is not there. It is counted once and remembered.
 func (s *store) indexedBlocks(ctx context.Context) (int64, error) {
+	if s.indexed != nil {
+		return *s.indexed, nil
+	}
 	var n int64
-	err := s.db.QueryRowContext(ctx, `SELECT count(DISTINCT block) FROM mention`).Scan(&n)
-	return n, err
+	if err := s.db.QueryRowContext(ctx, `SELECT count(DISTINCT block) FROM mention`).Scan(&n); err != nil {
+		return 0, err
+	}
+	s.indexed = &n
+	return n, nil
 }
 
 // lookUp gives the numbers of at most f.Limit events after f.After in the indexed blocks.
@@ -189,5 +195,11 @@ func (s *store) indexBlock(ctx context.Context, block int64) error {
 			return errors.Join(fmt.Errorf("index block %d: %w", block, err), tx.Rollback())
 		}
 	}
-	return tx.Commit()
+	s.indexed = nil // counted again, whatever the commit says
+	if err := tx.Commit(); err != nil {
+		return err
+	}
+	next := block + 1
+	s.indexed = &next
+	return nil
 }

@@ -15,9 +15,10 @@ type store struct {
 	path string
 	turn chan struct{}
 
-	// Both belong to the turn.
-	db     *sql.DB // nil when closed or broken
-	closed bool
+	// These belong to the turn.
+	db      *sql.DB // nil when closed or broken
+	closed  bool
+	indexed *int64 // blocks in the index, nil when not counted yet
 }
 
 func newStore(path string) *store {
@@ -55,7 +56,7 @@ func (s *store) connect(ctx context.Context, dsn string) error {
 	if err != nil {
 		return explain("open", s.path, err)
 	}
-	s.db = db
+	s.db, s.indexed = db, nil
 	return nil
 }
 
