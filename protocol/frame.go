@@ -3,11 +3,16 @@
 // characters, right-aligned numbers, the unit field as the sign of stability.
 //
 // It does no I/O, knows no clock and starts no goroutine. It refuses to guess: a line
-// that is damaged, cut off or not understood is never a weight, and no prefix of a
-// valid line is one.
+// that is damaged, cut off or not understood is never a weight, no prefix of a valid
+// line is one, and nothing inside a printed report is one.
+//
+// The forms are those of the interface chapters of balance operating manuals. Where
+// manuals disagree, the comment beside the form says what is accepted.
 package protocol
 
 import (
+	"bytes"
+
 	"tenthmark/calc/decimal"
 )
 
@@ -28,100 +33,107 @@ var kindNames = [...]string{"damaged", "weight", "status", "error", "blank", "te
 
 func (k Kind) String() string { return kindNames[k] }
 
-// Condition is what a status line says.
-type Condition uint8
-
-// The conditions.
-const (
-	NoCondition Condition = iota
-	Overload              // H, HH, High
-	Underload             // L, LL, Low
-	Adjusting             // C, Cal.Ext., Cal.Int.
-	Final                 // --: all digits shown, stable
-)
-
-var conditionNames = [...]string{"", "overload", "underload", "adjusting", "final"}
-
-func (c Condition) String() string { return conditionNames[c] }
-
 // Damage says why a line cannot be trusted.
 type Damage uint8
 
 // The kinds of damage.
 const (
 	NoDamage     Damage = iota
-	NulByte             // a byte arrived with wrong parity, or the speed is wrong
+	NulByte             // a NUL: a byte came with wrong parity, or the speed is wrong
 	TooLong             // no terminator within the longest line
-	Unterminated        // the line was cut off by silence or by the end
-	Unreadable          // bytes that no balance prints
+	Unterminated        // cut off by silence or by the end
+	Unreadable          // control characters, which no balance prints
+	WrongParity         // a byte with another parity than all others on this line
+	Misaligned          // a weight whose columns do not fit: a character was lost or added
 )
 
-var damageNames = [...]string{"", "a byte was lost on the line", "longer than any line", "cut off", "unreadable bytes"}
+var damageNames = [...]string{"", "nul byte", "too long", "unterminated", "unreadable", "wrong parity", "misaligned"}
 
 func (d Damage) String() string { return damageNames[d] }
 
-// Frame is one line as it was understood. Raw is valid until the decoder is fed again.
+// Frame is one line as it was understood. It and its Raw are valid until the decoder
+// is fed again; what is to be kept must be copied.
 type Frame struct {
 	Kind             Kind
 	Raw              []byte // the bytes exactly as they came, with terminator and bit 7
+	Dropped          int    // bytes of an endless line beyond what Raw holds
 	ID               string // identification code of the 22-character form, "" if none
 	Unit             string // "" when the unit field is blank
 	Sign             byte   // '+', '-' or 0 when no sign was sent
 	Stable           bool   // the unit is shown, or the pattern says so
-	Plain            bool   // may serve as a weighing: see Decoder
+	Plain            bool   // may serve as a weighing: net, gross or no ID; g, mg, kg or blank unit; outside reports
 	UnverifiedDigits int    // digits in brackets
 	InReport         bool   // the line stands inside a printed report
+	Reply            bool   // the line answers the question announced by Expect
 	Condition        Condition
 	Code             string // of an Error
 	Damage           Damage
 
-	digits []byte // the number as sent, without sign and brackets, with a point
+	line     []byte // the line without terminator, bit 7 and flow control
+	digits   []byte // the number as sent, without sign and brackets, with a point
+	unscaled int64  // the digits as an integer, without sign
+	decimals int    // digits after the decimal mark
 }
 
-// Text gives the digits as sent, without sign and brackets: "123.56".
+// Text gives the digits as sent, without sign and brackets and with a decimal point:
+// "123.56"; "" when the frame is no Weight.
 func (f *Frame) Text() string { return string(f.digits) }
 
-// Value gives the number with its sign; it is absent when the frame is no Weight.
+// Content gives the text of the line without terminator and surrounding blanks.
+func (f *Frame) Content() string { return string(bytes.TrimSpace(f.line)) }
+
+// Value gives the number with its sign, every decimal kept; it is absent when the
+// frame is no Weight.
 func (f *Frame) Value() decimal.Number {
 	if f.Kind != Weight {
 		return decimal.Number{}
 	}
-	text := string(f.digits)
+	var buf [2 + decimal.MaxDigits]byte
+	text := buf[:0]
 	if f.Sign == '-' {
-		text = "-" + text
+		text = append(text, '-')
 	}
-	n, err := decimal.Parse(text)
+	n, err := decimal.Parse(string(append(text, f.digits...)))
 	if err != nil {
 		return decimal.Number{}
 	}
 	return n
 }
 
-// gramShift gives the power of ten that turns a unit into grams.
-var gramShift = map[string]int{"g": 0, "mg": 3, "kg": -3, "": 0}
+// Scaled gives the number as an integer and its count of decimals: the value is
+// unscaled × 10^-decimals in the frame's unit. It allocates nothing.
+func (f *Frame) Scaled() (unscaled int64, decimals int) {
+	if f.Sign == '-' {
+		return -f.unscaled, f.decimals
+	}
+	return f.unscaled, f.decimals
+}
 
 // MassG gives the number in grams, shifting the decimal mark and no more. It is absent
 // when the unit is not g, mg or kg; a blank unit is taken as grams.
 func (f *Frame) MassG() decimal.Number {
 	n := f.Value()
-	shift, ok := gramShift[f.Unit]
-	if !n.IsSet() || !ok {
-		return decimal.Number{}
-	}
-	switch decimals := n.Decimals() + shift; {
-	case shift == 0:
+	shift, ok := gramShift(f.Unit)
+	if !n.IsSet() || !ok || shift == 0 {
+		if !ok {
+			return decimal.Number{}
+		}
 		return n
-	case decimals >= 0 && decimals <= decimal.MaxDigits:
-		return decimal.New(n.Unscaled(), decimals)
-	default:
-		return decimal.New(n.Unscaled()*pow10(-decimals), 0)
 	}
+	return shifted(n.Unscaled(), n.Decimals()+shift)
 }
 
-func pow10(n int) int64 {
-	p := int64(1)
-	for range n {
-		p *= 10
+// shifted gives unscaled × 10^-decimals, absent when that cannot be held.
+func shifted(unscaled int64, decimals int) decimal.Number {
+	const most = 999_999_999_999_999_999 / 10
+	for ; decimals < 0; decimals++ {
+		if unscaled > most || unscaled < -most {
+			return decimal.Number{}
+		}
+		unscaled *= 10
 	}
-	return p
+	if decimals > decimal.MaxDigits {
+		return decimal.Number{}
+	}
+	return decimal.New(unscaled, decimals)
 }

@@ -1,10 +1,29 @@
 package protocol
 
-import "bytes"
+// Condition is what a status line says.
+type Condition uint8
 
-// conditions holds the words of status lines, lower case, without blanks: the
-// letters of older balances and the words of newer ones.
-var conditions = []struct {
+// The conditions.
+const (
+	NoCondition Condition = iota
+	Overload              // H, HH, High
+	Underload             // L, LL, Low
+	Adjusting             // C, Cal.Ext., Cal.Int.
+	Final                 // --: all digits shown, stable
+)
+
+var conditionNames = [...]string{"", "overload", "underload", "adjusting", "final"}
+
+func (c Condition) String() string { return conditionNames[c] }
+
+// conditions holds the words of status lines, lower case, without blanks: the letters
+// of older balances (H, L, C; doubled in checkweighing) and the words of newer ones.
+// Manuals print them in different columns and spell "Cal.Ext." with and without an
+// inner blank: the word counts, not where it stands. Unknown words are text.
+//
+//	H             Stat        H         Stat        High
+//	--            Stat       Cal.Ext.
+var conditions = [...]struct {
 	word string
 	is   Condition
 }{
@@ -17,29 +36,27 @@ var conditions = []struct {
 	{"c", Adjusting},
 	{"cal.ext.", Adjusting},
 	{"cal.int.", Adjusting},
+	{"cal.ext", Adjusting},
+	{"cal.int", Adjusting},
 	{"--", Final},
 }
 
-// parseStatus reads a status line. Columns differ between makes, so the word counts
-// and not where it stands.
-func parseStatus(f *Frame, body []byte) bool {
-	if f.ID != "" && f.ID != "Stat" {
-		return false
-	}
-	var buf [16]byte
+func (f *Frame) parseCondition(body []byte) bool {
+	var buf [longestWord]byte
 	word, ok := squeeze(buf[:0], body)
 	if !ok {
 		return false
 	}
-	for _, c := range conditions {
-		if string(word) == c.word {
-			f.Kind, f.Condition = Status, c.is
-			f.ID = ""
+	for i := range conditions {
+		if string(word) == conditions[i].word {
+			f.Kind, f.Condition = Status, conditions[i].is
 			return true
 		}
 	}
 	return false
 }
+
+const longestWord = 12
 
 // squeeze writes s in lower case and without blanks; it gives up on longer text than
 // any status word.
@@ -57,45 +74,4 @@ func squeeze(dst, s []byte) ([]byte, bool) {
 		dst = append(dst, c)
 	}
 	return dst, len(dst) > 0
-}
-
-// parseError reads "Err 053", "ERR 53", "E 53", "APP.ERR" and the like.
-func parseError(f *Frame, body []byte) bool {
-	if f.ID != "" && f.ID != "Stat" && !bytes.EqualFold([]byte(f.ID), []byte("ERR")) {
-		return false
-	}
-	var buf [16]byte
-	word, ok := squeeze(buf[:0], body)
-	if !ok {
-		return false
-	}
-	if code, ok := errorCode(word); ok {
-		f.Kind, f.Code, f.ID = Error, code, ""
-		return true
-	}
-	return false
-}
-
-func errorCode(word []byte) (string, bool) {
-	for _, area := range []string{"app", "dis", "prt"} {
-		if s := string(word); s == area+".err" || s == area+".er" {
-			return string(bytes.ToUpper(word[:3])) + ".ERR", true
-		}
-	}
-	rest := word
-	for _, prefix := range []string{"err", "e"} {
-		if cut, found := bytes.CutPrefix(word, []byte(prefix)); found {
-			rest = cut
-			break
-		}
-	}
-	if len(rest) == len(word) || len(rest) < 2 || len(rest) > 3 {
-		return "", false
-	}
-	for _, c := range rest {
-		if !isDigit(c) && !bytes.ContainsRune([]byte("#xyz"), rune(c)) { // the manuals mask digits so
-			return "", false
-		}
-	}
-	return string(bytes.ToUpper(rest)), true
 }

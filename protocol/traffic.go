@@ -1,53 +1,78 @@
 package protocol
 
-import (
-	"fmt"
-	"math/bits"
+import "fmt"
+
+// Traffic counts what came, to tell a wrong line setting from a right one. When it has
+// counted for long it halves all counts, so that a line that goes bad shows.
+type Traffic struct {
+	Bytes   int // all bytes
+	High    int // with bit 7 set
+	Odd     int // with an odd count of ones
+	Nul     int // NUL, which stands for a byte with a wrong parity
+	Strange int // control characters that no balance prints
+	Frames  int // lines, whole or damaged
+	Read    int // lines understood as weight, status, error or blank
+}
+
+const (
+	fewestBytes = 32 // below this the counts say nothing
+	mostBytes   = 1 << 14
 )
 
-// traffic counts what tells a wrong line setting from a right one.
-type traffic struct {
-	bytes, high, odd, even, nul, strange int
-}
-
-func (t *traffic) count(b byte) {
-	t.bytes++
-	if b >= 0x80 {
-		t.high++
+func (t *Traffic) fade() {
+	if t.Bytes < mostBytes {
+		return
 	}
-	if bits.OnesCount8(b)%2 == 1 {
-		t.odd++
-	} else {
-		t.even++
-	}
-	switch c := b & 0x7F; {
-	case c == 0:
-		t.nul++
-	case c < 0x20 && c != '\r' && c != '\n' && c != 0x11 && c != 0x13, c == 0x7F:
-		t.strange++
+	for _, n := range []*int{&t.Bytes, &t.High, &t.Odd, &t.Nul, &t.Strange, &t.Frames, &t.Read} {
+		*n /= 2
 	}
 }
 
-// fewestBytes: below this the counts say nothing.
-const fewestBytes = 32
+// Traffic gives the counts so far.
+func (d *Decoder) Traffic() Traffic { return d.traffic }
 
-// Diagnosis names a line setting that does not fit, from the bytes so far; "" when
-// nothing looks wrong.
+// Diagnosis names a line setting that does not fit, from the recent bytes, in words
+// for the person at the bench; "" when nothing looks wrong.
 func (d *Decoder) Diagnosis() string {
 	t := d.traffic
+	strange := t.Nul + t.Strange
 	switch {
-	case t.bytes < fewestBytes:
+	case t.Bytes < fewestBytes:
 		return ""
-	case (t.nul+t.strange)*10 > t.bytes:
-		return fmt.Sprintf("%d of %d bytes are no text: the speed is probably wrong, or the balance sends with another parity", t.nul+t.strange, t.bytes)
-	case t.high*10 <= t.bytes:
+	case strange*10 > t.Bytes && t.Strange == 0:
+		return fmt.Sprintf("%d of %d bytes came as NUL: the balance sends with another parity than the line expects, or the speed is wrong", t.Nul, t.Bytes)
+	case strange*10 > t.Bytes:
+		return fmt.Sprintf("unreadable bytes (%d of %d are no text): wrong speed (baud)?", strange, t.Bytes)
+	case t.High*10 <= t.Bytes:
 		return ""
-	case t.high == t.bytes:
-		return "looks like 7 data bits, mark parity"
-	case t.odd == t.bytes:
-		return "looks like 7 data bits, odd parity"
-	case t.even == t.bytes:
-		return "looks like 7 data bits, even parity"
 	}
-	return fmt.Sprintf("%d of %d bytes have their top bit set: parity or data bits do not fit", t.high, t.bytes)
+	if p, ok := t.likelyParity(); ok {
+		return fmt.Sprintf("looks like 7 data bits, %s parity", p)
+	}
+	return fmt.Sprintf("unreadable bytes (%d of %d have their top bit set and agree on no parity): wrong speed (baud)?", t.High, t.Bytes)
+}
+
+// likelyParity allows one byte in fifty to be disturbed.
+func (t Traffic) likelyParity() (Parity, bool) {
+	few := t.Bytes / 50
+	switch {
+	case t.Bytes-t.Odd <= few:
+		return OddParity, true
+	case t.Odd <= few:
+		return EvenParity, true
+	case t.Bytes-t.High <= few:
+		return MarkParity, true
+	}
+	return NoParity, false
+}
+
+// Parity gives the parity that the recent bytes carry in bit 7, NoParity when they
+// carry none or too few came.
+func (d *Decoder) Parity() Parity {
+	t := d.traffic
+	if t.Bytes < fewestBytes || t.High*10 <= t.Bytes {
+		return NoParity
+	}
+	p, _ := t.likelyParity()
+	return p
 }
