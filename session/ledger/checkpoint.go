@@ -65,7 +65,10 @@ func parseHead(text string) (Head, error) {
 
 // readUnsigned reads what a checkpoint says, whoever signed it.
 func readUnsigned(signed []byte) (Head, error) {
-	text, _, _ := strings.Cut(string(signed), "\n\n")
+	text, _, found := strings.Cut(string(signed), "\n\n")
+	if !found {
+		return Head{}, errors.New("checkpoint: not a signed note")
+	}
 	return parseHead(text + "\n")
 }
 
