@@ -2,6 +2,7 @@ package ledger
 
 import (
 	"bufio"
+	"cmp"
 	"context"
 	"crypto/sha256"
 	"encoding/hex"
@@ -11,6 +12,9 @@ import (
 	"math/rand/v2"
 	"os"
 	"os/exec"
+	"path/filepath"
+	"regexp"
+	"strconv"
 	"strings"
 	"testing"
 	"time"
@@ -27,9 +31,13 @@ func TestMain(m *testing.M) {
 			fmt.Fprintln(os.Stderr, err)
 			os.Exit(1)
 		}
+		os.Exit(0)
 	}
 	os.Exit(m.Run())
 }
+
+// victimLimit makes the writer stop by itself after so many appends.
+const victimLimit = "TENTHMARK_LEDGER_APPENDS"
 
 // victim appends without end and says for each event, after Append has returned, number
 // and hash on standard output. Now and then it signs, saves a snapshot or indexes.
@@ -40,7 +48,11 @@ func victim(path string) error {
 		return err
 	}
 	fmt.Println("open")
-	for n := int64(0); ; n++ {
+	limit, err := strconv.ParseInt(cmp.Or(os.Getenv(victimLimit), "-1"), 10, 64)
+	if err != nil {
+		return err
+	}
+	for n := int64(0); n != limit; n++ {
 		drafts := plains(1 + rand.IntN(3))
 		entries, err := l.Append(ctx, drafts...)
 		if err != nil {
@@ -53,6 +65,7 @@ func victim(path string) error {
 			return err
 		}
 	}
+	return l.Close()
 }
 
 func chore(ctx context.Context, l *Ledger, n int64) error {
@@ -170,4 +183,30 @@ func inspect(t *testing.T, opt Options, acked map[int64]string) (unacked int64) 
 		}
 	}
 	return unacked
+}
+
+// TestOneSyncPerCommit counts with strace that every acknowledged append waited for the
+// disk at least once.
+func TestOneSyncPerCommit(t *testing.T) {
+	needs(t, "strace")
+	opt := found(t, t.TempDir())
+	count := filepath.Join(t.TempDir(), "count")
+	cmd := exec.Command("strace", "-f", "-c", "-e", "trace=fsync,fdatasync", "-o", count, os.Args[0])
+	cmd.Env = append(os.Environ(), victimEnv+"="+opt.Path, victimLimit+"=200")
+	if out, err := cmd.CombinedOutput(); err != nil {
+		t.Skipf("strace does not work here: %v\n%s", err, out)
+	}
+	text, err := os.ReadFile(count)
+	if err != nil {
+		t.Fatal(err)
+	}
+	total := regexp.MustCompile(`(?m)(\d+)\s+(?:\d+\s+)?total$`).FindSubmatch(text)
+	if total == nil {
+		t.Fatalf("no total in:\n%s", text)
+	}
+	syncs, err := strconv.Atoi(string(total[1]))
+	if err != nil || syncs < 200 {
+		t.Errorf("%d syncs for 200 appends (%v)", syncs, err)
+	}
+	t.Logf("%d syncs for 200 appends, 8 checkpoints and 7 or 8 snapshots", syncs)
 }
