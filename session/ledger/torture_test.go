@@ -200,7 +200,7 @@ func TestOneSyncPerCommit(t *testing.T) {
 	if err != nil {
 		t.Fatal(err)
 	}
-	total := regexp.MustCompile(`(?m)(\d+)\s+(?:\d+\s+)?total$`).FindSubmatch(text)
+	total := regexp.MustCompile(`(?m)^\s*100\.00\s+\S+\s+\d+\s+(\d+)\s.*total$`).FindSubmatch(text)
 	if total == nil {
 		t.Fatalf("no total in:\n%s", text)
 	}
