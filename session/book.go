@@ -25,6 +25,7 @@ import (
 // One that is closed can be fetched again from its own events: see Shelve and Fetch.
 type Book struct {
 	Burettes  map[string]*Entry
+	People    map[string]*Member // see people.go
 	Runs      map[string]*Run
 	Summaries map[string]*Summary
 	Order     []string // the runs' names in the order in which they were opened
@@ -41,7 +42,7 @@ type Entry struct {
 
 // NewBook gives an empty book.
 func NewBook() *Book {
-	return &Book{Burettes: map[string]*Entry{}, Runs: map[string]*Run{}, Summaries: map[string]*Summary{}}
+	return &Book{Burettes: map[string]*Entry{}, People: map[string]*Member{}, Runs: map[string]*Run{}, Summaries: map[string]*Summary{}}
 }
 
 // BuretteBody is the body of the events of the register.
@@ -66,6 +67,8 @@ func (b *Book) Apply(line []byte) error {
 		return b.applyOpened(e, line)
 	case BuretteRegistered, BuretteChanged:
 		return b.applyBurette(e)
+	case OperatorAdded, OperatorChanged, SignedIn, SignInRefused:
+		return b.applyPeople(e)
 	case DaemonStarted, DaemonStopped:
 		b.Unclean = e.Kind == DaemonStarted
 	}

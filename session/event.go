@@ -41,6 +41,7 @@ const (
 	SignedOut         Kind = "sign-out"
 	StationOnline     Kind = "station.online"
 	StationOffline    Kind = "station.offline"
+	StationTared      Kind = "station.tared"
 	LineDiagnosed     Kind = "line.diagnosed"
 	LogSample         Kind = "log.sample"
 	DaemonStarted     Kind = "daemon.started"

@@ -6,6 +6,7 @@ import "fmt"
 const (
 	MeaningPerformed = "performed"
 	MeaningReviewed  = "reviewed"
+	MeaningTrail     = "trail-reviewed"
 )
 
 // Step decides on suspending, resuming, abandoning or reopening a run.
@@ -54,6 +55,18 @@ func (r *Run) ApproveBy(signer Actor, signIn bool) ([]Draft, error) {
 	return []Draft{r.draft(RunReviewed, r.signed(MeaningReviewed, signer.Name(), signIn))}, nil
 }
 
+// ReviewTrail decides on signing that the run's changes were looked through. It comes
+// before the approval and, like that, is another person's work.
+func (r *Run) ReviewTrail(signer Actor, signIn bool) ([]Draft, error) {
+	if r.State != Finished {
+		return nil, Refuse("wrong-state", fmt.Sprintf("Run %s is %s; the changes of a finished run are reviewed.", r.ID, r.State), r.Prompt())
+	}
+	if signer == r.Performed.By || r.tookPart(signer) {
+		return nil, Refuse("own-run", fmt.Sprintf("%s took part in run %s and cannot review its changes.", signer.Name(), r.ID), "Another person reviews them.")
+	}
+	return []Draft{r.draft(TrailReviewed, r.signed(MeaningTrail, signer.Name(), signIn))}, nil
+}
+
 // tookPart says whether somebody entered or changed anything in the run.
 func (r *Run) tookPart(who Actor) bool {
 	for _, c := range r.Changes {
@@ -73,6 +86,7 @@ func (r *Run) tookPart(who Actor) bool {
 var statements = map[string]string{
 	MeaningPerformed: "I performed this calibration as recorded here; the record is complete and true. (statement 1)",
 	MeaningReviewed:  "I reviewed this calibration and its changes and approve it for publication. (statement 1)",
+	MeaningTrail:     "I looked through the changes, exclusions and late entries of this calibration. (statement 1)",
 }
 
 // Statement gives the sentence that a signature of this meaning signs.
