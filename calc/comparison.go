@@ -19,7 +19,7 @@ const enDecimals = 4
 func EnScore(x, xRef, expanded, expandedRef float64) (float64, error) {
 	en := (x - xRef) / math.Hypot(expanded, expandedRef)
 	if math.IsNaN(en) || math.IsInf(en, 0) {
-		return 0, fmt.Errorf("En of %g and %g with U %g and %g is no number", x, xRef, expanded, expandedRef)
+		return 0, fmt.Errorf("the En score of %g and %g with U %g and %g is no number", x, xRef, expanded, expandedRef)
 	}
 	return en, nil
 }

@@ -320,3 +320,47 @@ func TestHistoryLongestInterval(t *testing.T) {
 		}
 	}
 }
+
+func TestHistoryChart(t *testing.T) {
+	for _, tt := range []struct {
+		name string
+		last float64
+		want string
+	}{{"as ever", 0.012, ""}, {"odd", 0.0150, "warning"}, {"out", 0.03, "action"}} {
+		values := []float64{0.010, 0.012, 0.009, 0.011, 0.012, 0.010, 0.011, tt.last}
+		h := yearly(len(values), 0, 0, 0.004, quiet)
+		for i := range h {
+			h[i].Curve = handCurve([]float64{50}, []float64{values[i]}, diagonal(1, 0.004))
+		}
+		c, err := ChartHistory(h, 0, 50)
+		if err != nil || c.Last != tt.want || c.Limits.Provisional || len(c.Values) != 8 {
+			t.Errorf("%s: %+v, %v", tt.name, c, err)
+		}
+	}
+	var r *Refusal
+	if _, err := ChartHistory(yearly(3, 0, 0, 0.004, quiet), 0, 50); !errors.As(err, &r) {
+		t.Errorf("three calibrations: %v", err)
+	}
+	if _, err := ChartHistory(yearly(5, 0, 0, 0.004, quiet), 0, 60); !errors.Is(err, ErrOutsideCurve) {
+		t.Errorf("outside: %v", err)
+	}
+}
+
+// F quantiles for 10 and 10 degrees of freedom: 3.72 at 97.5 % (the usual table, from
+// memory) and its inverse.
+func TestHistoryRepeatability(t *testing.T) {
+	same, err := CompareRepeatability(0.0031, 0.00297, 10, 10, 0.05)
+	if err != nil || same.Changed {
+		t.Fatalf("%+v, %v", same, err)
+	}
+	near(t, "F 97.5 %", same.Up, "3.72")
+	near(t, "F 2.5 %", 1/same.Low, "3.72")
+	for _, s := range []float64{0.0062, 0.0014} {
+		if got, err := CompareRepeatability(s, 0.00297, 10, 10, 0.05); err != nil || !got.Changed {
+			t.Errorf("s = %g: %+v, %v", s, got, err)
+		}
+	}
+	if _, err := CompareRepeatability(0.003, 0, 10, 10, 0.05); err == nil {
+		t.Error("s of 0 was accepted")
+	}
+}

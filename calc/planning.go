@@ -45,17 +45,20 @@ type Forecast struct {
 	Layout     Layout       `json:"layout"`
 	Deliveries int          `json:"deliveries"`
 	Weighings  int          `json:"weighings"`
+	Fills      int          `json:"fills"` // of the burette
 	Points     []Point      `json:"points"`
 	LargestUML float64      `json:"largest_U_mL"`
-	AtML       float64      `json:"at_mL"`      // the point with the largest U
-	FloorUML   float64      `json:"floor_U_mL"` // the largest U with replicates without end
-	Dominant   []BudgetLine `json:"dominant"`   // of that point, largest share first
+	AtML       float64      `json:"at_mL"`                          // the point with the largest U
+	BetweenUML float64      `json:"largest_U_between_mL,omitempty"` // halfway between points, see ProposePoints
+	FloorUML   float64      `json:"floor_U_mL"`                     // the largest U with replicates without end
+	Dominant   []BudgetLine `json:"dominant"`                       // of that point, largest share first
 	MPEML      float64      `json:"mpe_mL,omitempty"`
 	TestRatio  float64      `json:"test_uncertainty_ratio,omitempty"` // MPE / largest U
 	Within3rd  bool         `json:"U_within_third_MPE"`               // JCGM 106:2012 8.2.3
 
 	floor, random []float64 // variances of the points, mL²: shared by the run, and of this layout's facts
 	floorLine     BudgetLine
+	curve         *Curve
 }
 
 // Foresee tells the uncertainty that a layout would reach, from the curve that perfect
@@ -69,7 +72,10 @@ func Foresee(in Inputs, l Layout, room Conditions, mpe MPE) (Forecast, error) {
 	if err != nil {
 		return Forecast{}, fmt.Errorf("plan: %w", err)
 	}
-	f := Forecast{Layout: l, Deliveries: len(ds), Weighings: weighings, Points: c.Points}
+	f := Forecast{Layout: l, Deliveries: len(ds), Weighings: weighings, Fills: l.Replicates, Points: c.Points, curve: c}
+	if l.ReadingPattern == readFromZero {
+		f.Fills = f.Deliveries
+	}
 	k, err := CoverageFactor(in.CoverageProbability, math.Inf(1))
 	if err != nil {
 		return Forecast{}, fmt.Errorf("plan: %w", err)
@@ -111,8 +117,11 @@ func (f *Forecast) dominant(lines []BudgetLine) {
 
 // Words says in a sentence or two what the layout reaches and what it hangs on.
 func (f Forecast) Words() string {
-	s := fmt.Sprintf("%d deliveries reach U = %.4f mL at %g mL; %.0f %% of the variance there comes from %s.",
+	s := fmt.Sprintf("%d deliveries reach U = %.4f mL at %g mL; the largest part of the variance there, %.0f %%, is %s.",
 		f.Deliveries, f.LargestUML, f.AtML, f.Dominant[0].SharePct, f.Dominant[0].What)
+	if f.BetweenUML > 0 {
+		s += fmt.Sprintf(" Halfway between points it is up to %.4f mL.", f.BetweenUML)
+	}
 	switch {
 	case f.MPEML == 0:
 	case f.Within3rd:

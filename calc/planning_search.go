@@ -25,8 +25,8 @@ type Proposal struct {
 }
 
 // Propose gives for every pattern of reading and weighing the fewest replicates that
-// reach the goal at all test points, the least work first: by deliveries, then by
-// weighings. Patterns that cannot reach it come last and say why.
+// reach the goal at all test points, the least work first: see leastWork.
+// Patterns that cannot reach it come last and say why.
 //
 // The variance of a point is R/n + F: R from the facts of one replicate, F from what
 // the whole run shares. No number of replicates gets below k·√F.
@@ -44,17 +44,27 @@ func Propose(in Inputs, pointsML []float64, room Conditions, goal Goal) ([]Propo
 			all = append(all, p)
 		}
 	}
-	sort.SliceStable(all, func(i, j int) bool {
-		a, b := all[i], all[j]
-		switch {
-		case a.Reached != b.Reached:
-			return a.Reached
-		case a.Forecast.Deliveries != b.Forecast.Deliveries:
-			return a.Forecast.Deliveries < b.Forecast.Deliveries
-		}
-		return a.Forecast.Weighings < b.Forecast.Weighings
-	})
+	leastWork(all)
 	return all, nil
+}
+
+// leastWork sorts proposals: those that reach the goal first, then by deliveries,
+// weighings, fills of the burette and U.
+func leastWork(all []Proposal) {
+	sort.SliceStable(all, func(i, j int) bool {
+		a, b := all[i].Forecast, all[j].Forecast
+		switch {
+		case all[i].Reached != all[j].Reached:
+			return all[i].Reached
+		case a.Deliveries != b.Deliveries:
+			return a.Deliveries < b.Deliveries
+		case a.Weighings != b.Weighings:
+			return a.Weighings < b.Weighings
+		case a.Fills != b.Fills:
+			return a.Fills < b.Fills
+		}
+		return a.LargestUML < b.LargestUML
+	})
 }
 
 func propose(in Inputs, l Layout, room Conditions, goal Goal) (Proposal, error) {
@@ -102,10 +112,10 @@ func (p Proposal) words(goal Goal) string {
 	pattern := f.Layout.ReadingPattern + ", weighed " + f.Layout.WeighingPattern
 	switch {
 	case p.Replicates == 0:
-		return fmt.Sprintf("%s: no number of replicates reaches U = %.4g mL. What the whole run shares alone gives U = %.4g mL; most of that comes from %s.",
+		return fmt.Sprintf("%s: no number of replicates reaches U = %.4g mL. What the whole run shares alone gives U = %.4g mL; most of that is %s.",
 			pattern, goal.ExpandedML, f.FloorUML, f.floorLine.What)
 	case !p.Reached:
-		return fmt.Sprintf("%s: U = %.4g mL would take %d replicates. The largest part comes from %s: make that smaller.",
+		return fmt.Sprintf("%s: U = %.4g mL would take %d replicates. The largest part is %s: make that smaller.",
 			pattern, goal.ExpandedML, p.Replicates, f.Dominant[0].What)
 	case p.Replicates == 1:
 		return fmt.Sprintf("%s: one delivery a point is enough for U = %.4g mL; two or more show whether deliveries repeat. %s",

@@ -170,3 +170,52 @@ func TestPlanningRefuses(t *testing.T) {
 		t.Error("hot water was accepted")
 	}
 }
+
+// Between points the bridge adds rate·L/4 halfway, by hand; more points shorten L.
+func TestPlanningPoints(t *testing.T) {
+	earlier := useCurve()
+	earlier.BridgeRateML2PerML, earlier.BridgeNu = 1.1e-5, 5
+	all, err := ProposePoints(DefaultInputs(), 50, OrdinaryRoom(), Goal{ExpandedML: 0.017, MPE: classA50}, earlier)
+	if err != nil {
+		t.Fatal(err)
+	}
+	best := all[0]
+	if !best.Reached || len(best.Forecast.Layout.PointsML) < 4 || best.Forecast.BetweenUML > 0.017 || best.Forecast.LargestUML > 0.017 {
+		t.Errorf("%s", best.Words)
+	}
+	two := false
+	for i, p := range all {
+		if len(p.Forecast.Layout.PointsML) == 2 {
+			two = true
+			if p.Reached || !strings.Contains(p.Words, "do not reach") {
+				t.Errorf("25 mL are too long a way: %s", p.Words)
+			}
+		}
+		if i > 0 && p.Reached && p.Forecast.Deliveries < all[i-1].Forecast.Deliveries {
+			t.Errorf("not in order of work: %s", p.Words)
+		}
+	}
+	if !two {
+		t.Error("two points were not tried")
+	}
+	one, err := Foresee(DefaultInputs(), Layout{fivePoints, 1, readFromZero, weighSeparate}, OrdinaryRoom(), MPE{})
+	if err != nil {
+		t.Fatal(err)
+	}
+	_, between, err := one.curve.largestU(3, earlier)
+	if err != nil {
+		t.Fatal(err)
+	}
+	// halfway between 40 and 50 mL
+	random := (one.random[3] + one.random[4]) / 4 / 3
+	shared := math.Pow((math.Sqrt(one.floor[3])+math.Sqrt(one.floor[4]))/2, 2) // nearly one variable
+	bridge := 1.1e-5 * 10 / 4
+	total := random + shared + bridge
+	k, err := CoverageFactor(0.9545, 5*total*total/(bridge*bridge))
+	if err != nil || math.Abs(between/(k*math.Sqrt(total))-1) > 0.01 {
+		t.Errorf("U halfway %.5f, by hand %.5f mL, %v", between, k*math.Sqrt(total), err)
+	}
+	if _, err := ProposePoints(DefaultInputs(), 0, OrdinaryRoom(), Goal{ExpandedML: 0.02}, earlier); err == nil {
+		t.Error("a burette of 0 mL")
+	}
+}

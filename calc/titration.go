@@ -15,6 +15,10 @@ type Titration struct {
 	EndML      float64 // reading after, mL; not below StartML
 	UReadingML float64 // standard uncertainty of each of the two settings, mL; 0: that of the calibration
 
+	// UDeliveryML is what one delivery adds by drainage and the drop at the tip, mL.
+	// Inputs.UDeliveryML is what the calibration took for it; 0 leaves it out.
+	UDeliveryML float64
+
 	HasTitrantTemp bool    // TitrantTempC was measured
 	TitrantTempC   float64 // °C
 	UTitrantTempC  float64 // standard uncertainty, °C; without a measured temperature, how far from the reference temperature it may be
@@ -70,7 +74,7 @@ func TitrantFactor(in Inputs, tempC float64) (factor, slopePerC float64, err err
 //
 // at the burette's reference temperature, with
 //
-//	u² = u²(C(b) − C(a)) + 2·u²(reading) + u²(temperature)
+//	u² = u²(C(b) − C(a)) + 2·u²(reading) + u²(delivery) + u²(temperature)
 //
 // where the first term comes from the curve's covariance and the bridge between its
 // points: what both corrections share nearly cancels, which u²(C(b)) + u²(C(a)) would
@@ -98,7 +102,7 @@ func Titrate(c *Curve, t Titration) (TitrationResult, error) {
 	uReading := or(t.UReadingML, c.Inputs.UReadingML)
 	r.VolumeML = scaleML * r.TempFactor
 	f2 := r.TempFactor * r.TempFactor
-	return r, r.expand(c, f2*d.UML*d.UML, float64(d.NuEff), u2+2*f2*uReading*uReading)
+	return r, r.expand(c, f2*d.UML*d.UML, float64(d.NuEff), u2+f2*(2*uReading*uReading+t.UDeliveryML*t.UDeliveryML))
 }
 
 // temperature fills the factor and the basis and gives u²(temperature), mL².

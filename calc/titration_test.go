@@ -1,6 +1,7 @@
 package calc
 
 import (
+	"encoding/json"
 	"errors"
 	"math"
 	"math/rand/v2"
@@ -318,5 +319,29 @@ func BenchmarkTitration(b *testing.B) {
 				}
 			}
 		})
+	}
+}
+
+// A curve that was stored and read again gives the same titration.
+func TestTitrationWithStoredCurve(t *testing.T) {
+	c := useCurve()
+	c.BridgeRateML2PerML, c.BridgeNu = 1e-6, 5
+	b, err := json.Marshal(c)
+	if err != nil {
+		t.Fatal(err)
+	}
+	var again Curve
+	if err := json.Unmarshal(b, &again); err != nil {
+		t.Fatal(err)
+	}
+	use := Titration{StartML: 0.42, EndML: 24.79, UDeliveryML: 0.003}
+	want, err1 := Titrate(c, use)
+	got, err2 := Titrate(&again, use)
+	if err1 != nil || err2 != nil || got != want {
+		t.Errorf("%+v and %+v, %v, %v", got, want, err1, err2)
+	}
+	plain, err := Titrate(c, Titration{StartML: 0.42, EndML: 24.79})
+	if err != nil || math.Abs(want.UML-math.Hypot(plain.UML, 0.003)) > 1e-12 {
+		t.Errorf("u %g with the delivery, %g without, %v", want.UML, plain.UML, err)
 	}
 }

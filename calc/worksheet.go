@@ -8,15 +8,26 @@ import (
 	"gonum.org/v1/gonum/stat"
 )
 
-// SheetEntry is one delivery on the worked sheet.
+// SheetEntry is one delivery on the worked sheet, with everything its volume is made
+// of:
+//
+//	net mass = after − before + evaporation
+//	factor   = 1000·(1 − ρa/ρb)/(ρw − ρa)·(1 − γ(t − tref))
+//	volume   = net mass × factor
 type SheetEntry struct {
-	Delivery     int     `json:"delivery"`
-	StartML      float64 `json:"start_mL"`
-	EndML        float64 `json:"end_mL"`
-	NetMassG     float64 `json:"net_mass_g"`
-	FactorMLPerG float64 `json:"factor_mL_per_g"` // volume = net mass × factor
-	VolumeML     float64 `json:"volume_20C_mL"`
-	CorrectionML float64 `json:"correction_mL"` // volume − (end − start)
+	Delivery         int     `json:"delivery"`
+	StartML          float64 `json:"start_mL"`
+	EndML            float64 `json:"end_mL"`
+	BeforeG          float64 `json:"before_g"`
+	AfterG           float64 `json:"after_g"`
+	EvaporationG     float64 `json:"evaporation_g"`
+	NetMassG         float64 `json:"net_mass_g"`
+	WaterTempC       float64 `json:"water_temp_C"`
+	WaterDensityKgM3 float64 `json:"water_density_kg_m3"`
+	AirDensityKgM3   float64 `json:"air_density_kg_m3"`
+	FactorMLPerG     float64 `json:"factor_mL_per_g"`
+	VolumeML         float64 `json:"volume_20C_mL"` // at the reference temperature
+	CorrectionML     float64 `json:"correction_mL"` // volume − (end − start)
 }
 
 // SheetInterval is what was delivered between the same two marks.
@@ -43,6 +54,9 @@ type SheetPoint struct {
 // It counts a reading near a mark as if it had been the mark, which the curve does not.
 type Worksheet struct {
 	FirstML           float64         `json:"first_mL"`
+	ReferenceTempC    float64         `json:"reference_temp_C"`
+	ExpansionPerC     float64         `json:"expansion_per_C"`
+	WeightDensityKgM3 float64         `json:"weight_density_kg_m3"`
 	Intervals         []SheetInterval `json:"intervals"`
 	Points            []SheetPoint    `json:"points"`
 	PooledSML         float64         `json:"pooled_s_mL"` // of all intervals; 0 without replicates
@@ -63,13 +77,16 @@ func NewWorksheet(in Inputs, c *Curve, ds []Delivery) (Worksheet, error) {
 		}
 		entries = append(entries, SheetEntry{
 			Delivery: d.Delivery, StartML: d.Start.ReadingML, EndML: d.End.ReadingML,
-			NetMassG: v.NetMassG, FactorMLPerG: v.Volume20ML / v.NetMassG, VolumeML: v.Volume20ML,
+			BeforeG: d.Before.MassG, AfterG: d.After.MassG, EvaporationG: d.EvaporationG, NetMassG: v.NetMassG,
+			WaterTempC: d.Water.WaterTempC, WaterDensityKgM3: v.WaterDensityKgM3, AirDensityKgM3: v.AirDensityKgM3,
+			FactorMLPerG: v.Volume20ML / v.NetMassG, VolumeML: v.Volume20ML,
 		})
 	}
 	w, err := WorkByHand(c.FirstML, c.readingsML(), entries)
 	if err != nil {
 		return Worksheet{}, err
 	}
+	w.ReferenceTempC, w.ExpansionPerC, w.WeightDensityKgM3 = in.ReferenceTempC, in.ExpansionPerC, in.WeightDensityKgM3
 	for i := range w.Points {
 		p := &w.Points[i]
 		at, err := c.At(p.ReadingML)

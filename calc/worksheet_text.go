@@ -2,6 +2,7 @@ package calc
 
 import (
 	"fmt"
+	"math"
 	"strings"
 )
 
@@ -17,33 +18,51 @@ const sheetExact = 1e-6
 func (w Worksheet) Text() string {
 	var b strings.Builder
 	b.WriteString("WORKED SHEET\n")
-	b.WriteString("correction = net mass × factor − (end − start); it is added to a reading. mL, g, mL/g.\n")
+	if w.WeightDensityKgM3 > 0 {
+		fmt.Fprintf(&b, "net        = after − before + evaporation, g\n")
+		fmt.Fprintf(&b, "factor     = 1000·(1 − ρa/%g)/(ρw − ρa)·(1 − %g·(t − %g)), mL/g, densities in kg/m³, t in °C\n", w.WeightDensityKgM3, w.ExpansionPerC, w.ReferenceTempC)
+	}
+	b.WriteString("volume     = net × factor, mL\ncorrection = volume − (end − start), mL; it is added to a reading\n")
 	for _, s := range w.Intervals {
-		fmt.Fprintf(&b, "\nFrom %g to %g mL\n", s.FromML, s.ToML)
-		fmt.Fprintf(&b, "%10s %9s %9s %11s %10s %10s %11s\n", "delivery", "start", "end", "net mass", "factor", "volume", "correction")
-		for _, e := range s.Entries {
-			fmt.Fprintf(&b, "%10d %9.3f %9.3f %11.4f %10.6f %10.4f %+11.5f\n", e.Delivery, e.StartML, e.EndML, e.NetMassG, e.FactorMLPerG, e.VolumeML, e.CorrectionML)
-		}
-		spread := ""
-		if len(s.Entries) > 1 {
-			spread = fmt.Sprintf("   s = %.5f", s.SML)
-		}
-		fmt.Fprintf(&b, "%64s %+11.5f%s\n", fmt.Sprintf("mean of %d", len(s.Entries)), s.MeanML, spread)
+		s.write(&b)
 	}
 	w.writeSums(&b)
 	return b.String()
+}
+
+func (s SheetInterval) write(b *strings.Builder) {
+	fmt.Fprintf(b, "\nFrom %g to %g mL\n", s.FromML, s.ToML)
+	fmt.Fprintf(b, "%8s %8s %8s %10s %10s %9s %6s %9s %8s %9s %9s %10s\n",
+		"delivery", "start", "end", "before", "after", "net", "t", "ρw", "ρa", "factor", "volume", "correction")
+	for _, e := range s.Entries {
+		fmt.Fprintf(b, "%8d %8.3f %8.3f %10.4f %10.4f %9.4f %6.2f %9.4f %8.5f %9.6f %9.5f %+10.5f\n",
+			e.Delivery, e.StartML, e.EndML, e.BeforeG, e.AfterG, e.NetMassG, e.WaterTempC, e.WaterDensityKgM3, e.AirDensityKgM3, e.FactorMLPerG, e.VolumeML, e.CorrectionML)
+	}
+	spread := ""
+	if len(s.Entries) > 1 {
+		spread = fmt.Sprintf("   s = %.5f", s.SML)
+	}
+	fmt.Fprintf(b, "%104s %+10.5f%s\n", fmt.Sprintf("mean of %d", len(s.Entries)), s.MeanML, spread)
 }
 
 func (w Worksheet) writeSums(b *strings.Builder) {
 	fmt.Fprintf(b, "\nSummed up the scale from %g mL, where the correction is 0\n", w.FirstML)
 	fmt.Fprintf(b, "%10s %28s %11s %11s %11s\n", "reading", "sum", "correction", "curve", "difference")
 	for _, p := range w.Points {
-		fmt.Fprintf(b, "%10g %28s %+11.5f %+11.5f %+11.5f\n", p.ReadingML, p.Steps, p.CorrectionML, p.CurveML, p.DifferenceML)
+		fmt.Fprintf(b, "%10g %28s %+11.5f %+11.5f %+11.5f\n", p.ReadingML, p.Steps, p.CorrectionML, p.CurveML, printed(p.DifferenceML))
 	}
 	if w.PooledNu > 0 {
 		fmt.Fprintf(b, "\nPooled standard deviation of a delivery: %.5f mL with %d degrees of freedom.\n", w.PooledSML, w.PooledNu)
 	}
 	fmt.Fprintf(b, "\n%s\n", w.Verdict())
+}
+
+// printed drops the sign of what five decimals print as zero.
+func printed(ml float64) float64 {
+	if math.Abs(ml) < 5e-6 {
+		return 0
+	}
+	return ml
 }
 
 // Verdict says how the sheet and the curve compare.
