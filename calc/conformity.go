@@ -61,6 +61,7 @@ type Conformity struct {
 	MPEML       float64       `json:"mpe_mL"`
 	LimitStatus LimitStatus   `json:"limit_status,omitempty"` // how far the limit itself was checked
 	LimitNote   string        `json:"limit_note,omitempty"`
+	CapacityML  float64       `json:"capacity_mL"` // nominal; 0: not known
 	Points      []JudgedPoint `json:"points"`
 	WorstPoint  JudgedPoint   `json:"worst_point"` // the one nearest to, or furthest beyond, its acceptance limit
 	WorstPair   JudgedPair    `json:"worst_pair"`
@@ -192,6 +193,7 @@ func (j *judge) point(p JudgedPoint, near float64) {
 func (j *judge) conclude(c *Curve) (Conformity, error) {
 	out := j.out
 	out.Standard, out.Class, out.MPEML = j.mpe.Standard, j.mpe.Class, j.mpe.LimitML
+	out.CapacityML = j.mpe.CapacityML
 	out.LimitStatus, out.LimitNote = j.mpe.Status, j.mpe.Note
 	out.Rule, out.GuardR, out.Decimals = j.rule.Name, j.rule.R, j.rule.Decimals
 	out.Verdict = verdicts[j.rank]

@@ -205,7 +205,7 @@ func TestConformityStatement(t *testing.T) {
 			t.Fatal(err)
 		}
 		s := got.Statement()
-		for _, part := range []string{"10, 20 and 30 mL", "ISO 385:2005, class A", "± 0.05 mL", "ILAC-G8:09/2019 " + want, "meets the specification", "from 10 to 20 mL"} {
+		for _, part := range []string{"from 30 to 50 mL, which was not tested", "10, 20 and 30 mL", "ISO 385:2005, class A", "± 0.05 mL", "ILAC-G8:09/2019 " + want, "meets the specification", "from 10 to 20 mL"} {
 			if !strings.Contains(s, part) {
 				t.Errorf("%s: %q is missing in\n%s", rule, part, s)
 			}
@@ -346,6 +346,27 @@ func TestConformityJointIsRepeatable(t *testing.T) {
 	}
 	if _, _, err := spanProbability([]float64{0, 0}, [][]float64{{1, 2}, {2, 1}}, math.Inf(1), 1); err == nil {
 		t.Error("an indefinite covariance was accepted")
+	}
+}
+
+// A plan of the largest size that a run takes.
+func TestConformityManyPoints(t *testing.T) {
+	var readings, corrections []float64
+	for i := range 100 {
+		readings = append(readings, float64(i+1)/2)
+		corrections = append(corrections, 0.02*math.Sin(float64(i)/15))
+	}
+	c := handCurve(readings, corrections, diagonal(100, 0.002))
+	got, err := Assess(c, classA50, Rule{Name: RuleGuarded})
+	if err != nil || len(got.Points) != 100 || !(got.PConform > 0.9 && got.PConform <= 1) {
+		t.Errorf("p %g, %v", got.PConform, err)
+	}
+}
+
+// Statement in hand: an empty Conformity has none.
+func TestConformityEmptyStatement(t *testing.T) {
+	if s := (Conformity{}).Statement(); s != "" {
+		t.Errorf("%q", s)
 	}
 }
 

@@ -364,3 +364,26 @@ func TestHistoryRepeatability(t *testing.T) {
 		t.Error("s of 0 was accepted")
 	}
 }
+
+// ILAC-G24, the staircase; numbers from memory.
+func TestHistoryStaircase(t *testing.T) {
+	for _, tt := range []struct {
+		name                  string
+		correction            float64
+		months, longest, want int
+	}{
+		{"well within", 0.02, 12, 60, 18},
+		{"well within, at the longest", 0.02, 48, 60, 60},
+		{"close to the limit", 0.045, 12, 60, 12},
+		{"outside", 0.06, 12, 60, 8},
+		{"outside, every month", 0.06, 1, 60, 1},
+	} {
+		found, err := Assess(handCurve([]float64{50}, []float64{tt.correction}, diagonal(1, 0.003)), classA50, Rule{})
+		if err != nil {
+			t.Fatal(err)
+		}
+		if got := Staircase(tt.months, tt.longest, found); got != tt.want {
+			t.Errorf("%s: %d months, want %d", tt.name, got, tt.want)
+		}
+	}
+}

@@ -152,3 +152,20 @@ func LongestInterval(material string) (months int, ok bool) {
 	}
 	return 0, false
 }
+
+// Staircase proposes the next interval in months from how a burette was found: half as
+// long again when the difference nearest to the limit used at most four fifths of it,
+// two thirds as long when the limit was not kept, else the same. The method is that of
+// ILAC-G24 (automatic adjustment), its numbers are from memory and the laboratory's to
+// choose; longest, e.g. from LongestInterval, is not exceeded.
+func Staircase(months, longest int, found Conformity) int {
+	used := math.Abs(found.WorstPair.DifferenceML) / found.MPEML
+	next := months
+	switch {
+	case found.Verdict == DoesNotMeet || found.Verdict == ConditionalFail:
+		next = months * 2 / 3
+	case used <= 0.8:
+		next = months * 3 / 2
+	}
+	return max(1, min(next, longest))
+}

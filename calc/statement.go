@@ -6,9 +6,16 @@ import (
 )
 
 // Statement says in words which results were judged, by which specification and
-// which rule, and what came out (ISO/IEC 17025:2017 7.8.6.2, ILAC-G8:09/2019).
+// which rule, and what came out (ISO/IEC 17025:2017 7.8.6.2, ILAC-G8:09/2019). It is
+// empty for the zero Conformity.
 func (c Conformity) Statement() string {
+	if len(c.Points) == 0 {
+		return ""
+	}
 	parts := []string{c.judged(), c.outcome(), c.ruleWords(), c.risk()}
+	if last := c.Points[len(c.Points)-1].ReadingML; last < c.CapacityML {
+		parts = append(parts, fmt.Sprintf("Nothing is said of the scale from %g to %g mL, which was not tested.", last, c.CapacityML))
+	}
 	if c.LimitStatus == LimitMemory {
 		parts = append(parts, "The limit is unverified: compare it with the standard before relying on this statement.")
 	}

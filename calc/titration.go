@@ -162,3 +162,24 @@ func addedNu(variance, nu, more float64) float64 {
 	ratio := 1 + more/variance
 	return nu * ratio * ratio
 }
+
+// Uncalibrated gives what is known of a titration from a burette that was never
+// calibrated and only keeps its class: the volume as read, the class limit with a
+// triangular distribution, MPE/√6, and the temperature as in Titrate (QUAM:2012, A2).
+// It shows what a calibration is worth.
+func Uncalibrated(in Inputs, mpe MPE, t Titration) (TitrationResult, error) {
+	if !(t.StartML <= t.EndML) || !(mpe.LimitML > 0) {
+		return TitrationResult{}, fmt.Errorf("titration from %g to %g mL with a limit of %g mL", t.StartML, t.EndML, mpe.LimitML)
+	}
+	r := TitrationResult{
+		StartML: t.StartML, EndML: t.EndML, ApparentML: t.EndML - t.StartML, TempFactor: 1,
+		Basis: fmt.Sprintf("as read, from a burette that keeps %s, class %s", mpe.Standard, mpe.Class),
+	}
+	u2, err := t.temperature(in, r.ApparentML, &r)
+	if err != nil {
+		return TitrationResult{}, err
+	}
+	r.VolumeML = r.ApparentML * r.TempFactor
+	class := mpe.LimitML * r.TempFactor / math.Sqrt(6)
+	return r, r.expand(&Curve{Inputs: in}, class*class, math.Inf(1), u2)
+}

@@ -345,3 +345,24 @@ func TestTitrationWithStoredCurve(t *testing.T) {
 		t.Errorf("u %g with the delivery, %g without, %v", want.UML, plain.UML, err)
 	}
 }
+
+// QUAM:2012 A2: a burette within ± 0.03 mL, triangular, 0.0122 mL; with 0.006 mL for the
+// temperature 0.0136 mL (the guide rounds the parts first).
+func TestTitrationUncalibrated(t *testing.T) {
+	in := DefaultInputs()
+	in.ExpansionPerC = 0
+	mpe := MPE{LimitML: 0.03, Class: "A", Standard: "ISO 385:2005"}
+	got, err := Uncalibrated(in, mpe, Titration{EndML: 18.64})
+	if err != nil {
+		t.Fatal(err)
+	}
+	near(t, "u of the class", got.UML, "0.0122")
+	near(t, "volume", got.VolumeML, "18.64")
+	warm, err := Uncalibrated(in, mpe, Titration{EndML: 18.64, UTitrantTempC: 3 / 1.96})
+	if err != nil || math.Abs(warm.UML-0.0136) > 1e-4 {
+		t.Errorf("with the temperature %.5f mL, %v", warm.UML, err)
+	}
+	if _, err := Uncalibrated(in, MPE{}, Titration{EndML: 1}); err == nil {
+		t.Error("no limit was accepted")
+	}
+}
