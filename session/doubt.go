@@ -61,15 +61,29 @@ func (r *Run) judge(d *Delivery, offML, expectedML float64) *Doubt {
 		shift := decimal.New(int64(lines)*subdivision.Unscaled(), subdivision.Decimals())
 		doubt.Kind, doubt.Fact = "misreading", d.End.Fact
 		doubt.Value = d.End.ReadingML.Sub(decimal.New(-shift.Unscaled(), shift.Decimals()))
-		doubt.Text = fmt.Sprintf("The water of delivery %d weighs %+.3f mL against its readings, %s a whole number of lines: the reading %s mL was probably %s mL.",
-			d.Number, offML, "close to", d.End.ReadingML, doubt.Value)
+		doubt.Text = fmt.Sprintf("Delivery %d: the water is %s than the readings say, close to %s: the reading %s mL was probably %s mL.",
+			d.Number, moreOrLess(offML), wholeLines(lines), d.End.ReadingML, doubt.Value)
 	case math.Abs(offML) > farOff*subdivision.Float():
 		doubt.Kind = "implausible"
-		doubt.Text = fmt.Sprintf("The water of delivery %d weighs %+.3f mL against its readings: a lost drop, a bubble, a wet vessel or a wrong value.", d.Number, offML)
+		doubt.Text = fmt.Sprintf("Delivery %d: the water is %s than the readings say: a lost drop, a bubble, a wet vessel or a wrong value.", d.Number, moreOrLess(offML))
 	default:
 		return nil
 	}
 	return doubt
+}
+
+func moreOrLess(offML float64) string {
+	if offML < 0 {
+		return fmt.Sprintf("%.3f mL less", -offML)
+	}
+	return fmt.Sprintf("%.3f mL more", offML)
+}
+
+func wholeLines(lines float64) string {
+	if math.Abs(lines) == 1 {
+		return "one line of the scale"
+	}
+	return fmt.Sprintf("%.0f lines of the scale", math.Abs(lines))
 }
 
 // expectedCorrection is the mean correction of the earlier deliveries between the

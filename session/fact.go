@@ -72,6 +72,7 @@ type Weight struct {
 	Mode     string         `json:"mode,omitempty"` // settle, print or poll
 	Trace    *Trace         `json:"trace,omitempty"`
 	Identity Identity       `json:"identity"`
+	Came     Time           `json:"came,omitzero"` // when its line came; the event says when it was recorded
 }
 
 // WeighingBody is the body of a WeightTaken event.
