@@ -25,7 +25,7 @@ func TestOutliersGrubbsTable(t *testing.T) {
 }
 
 // Published tables. Both sides: LibreTexts, Analytical Chemistry 2.1 (Harvey), appendix
-// 6; its 2.202 for n = 7 is a misprint of 2.020. One side: a table for class use.
+// 6; its 2.202 for n = 7 is a misprint of 2.020. One side: a published table of one-sided values.
 func TestOutliersGrubbsPublished(t *testing.T) {
 	for n, want := range map[int][4]string{
 		3: {"1.155", "1.15", "1.155", ""}, 4: {"1.481", "1.46", "1.496", ""}, 5: {"1.715", "1.67", "1.764", ""},

@@ -11,8 +11,8 @@ import (
 )
 
 // Three intervals of a textbook exercise: a 50 mL burette at 24 °C, 1.0038 mL/g
-// (D. C. Harris, Quantitative Chemical Analysis; the inputs as a public teaching file
-// repeats them, the printed +0.04, −0.02 and −0.05 mL from memory).
+// (D. C. Harris, Quantitative Chemical Analysis; the inputs as quoted in a
+// second source, the printed +0.04, −0.02 and −0.05 mL from memory).
 func TestWorksheetTextbookSegments(t *testing.T) {
 	var entries []SheetEntry
 	for i, r := range [][3]float64{{0.03, 10.01, 9.984}, {10.01, 19.90, 9.835}, {19.90, 30.06, 10.071}} {
