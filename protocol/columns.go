@@ -1,5 +1,7 @@
 package protocol
 
+import "bytes"
+
 // The columns of a body, counted from 0: a sign, nine columns for the number, flush
 // right, a separator, and the unit, flush left. In the 22-character form six columns
 // of identification code stand before it.
@@ -12,7 +14,8 @@ package protocol
 // off; the unit directly after the ninth column, as one make prints it.
 //
 // A character that was lost or added moves what follows it, and the columns show it:
-// such a line is Misaligned, never a weight.
+// such a line is Misaligned, never a weight. For the same reason trailing blanks are
+// all there or all cut off: "mg " that lost its m would be "g ".
 const (
 	idLength    = 6
 	numberStart = 1
@@ -24,7 +27,7 @@ const (
 // columns reads a body by its columns. It leaves the frame's kind alone when they do
 // not fit.
 func (f *Frame) columns(body []byte) bool {
-	if len(body) < numberEnd || len(body) > bodyLength && !isBlank(body[bodyLength:]) {
+	if len(body) < numberEnd || len(body) > bodyLength {
 		return false
 	}
 	sign := body[0]
@@ -54,10 +57,13 @@ func (f *Frame) columns(body []byte) bool {
 // unitColumns gives the unit when it and the end of the number stand where they must.
 func unitColumns(body []byte, end int) (unit []byte, ok bool) {
 	start := unitStart
+	bracket := body[end-1] == ']'
 	switch {
+	case bracket != (end == unitStart):
+		return nil, false // a closing bracket stands in the separator's place
 	case end == numberEnd && len(body) > numberEnd && body[numberEnd] != ' ':
 		start = numberEnd // no separator
-	case end == unitStart && body[numberEnd] == ']':
+	case bracket:
 		if len(body) > unitStart && body[unitStart] == '*' {
 			start++ // a mark that one manual prints after the bracket
 		}
@@ -70,13 +76,11 @@ func unitColumns(body []byte, end int) (unit []byte, ok bool) {
 		return nil, false
 	}
 	if start >= len(body) {
-		return nil, true
+		return nil, len(body) == end
 	}
-	unit = body[start:]
-	for len(unit) > 0 && unit[len(unit)-1] == ' ' {
-		unit = unit[:len(unit)-1]
-	}
-	return unit, isUnit(unit)
+	unit = bytes.TrimRight(body[start:], " ")
+	filled := len(body) >= start+unitLength
+	return unit, isUnit(unit) && (filled || len(unit) == len(body)-start && len(unit) > 0)
 }
 
 func isBlank(s []byte) bool {

@@ -2,174 +2,197 @@ package protocol
 
 import (
 	"bytes"
-	"os"
+	"encoding/json"
 	"strings"
 	"testing"
 
 	"tenthmark/calc/decimal"
 )
 
-// decodeAll feeds the bytes in portions of the given size and gives a line of JSON for
-// each frame.
-func decodeAll(in []byte, portion int) []string {
-	var out []string
-	d := NewDecoder(Options{})
-	keep := func(f *Frame) { out = append(out, string(f.AppendJSON(nil))) }
-	for len(in) > 0 {
-		n := min(portion, len(in))
-		d.Feed(in[:n], keep)
-		in = in[n:]
-	}
-	d.End(keep)
-	return out
-}
-
-// The lines and their meaning are from the interface chapters of balance operating
-// manuals; the file names the form each comes from.
-func TestManualExamples(t *testing.T) {
-	text, err := os.ReadFile("../testdata/protocol/manual_lines.tsv")
-	if err != nil {
-		t.Fatal(err)
-	}
-	for _, row := range strings.Split(strings.TrimSpace(string(text)), "\n")[1:] {
-		cells := strings.Split(row, "\t")
-		in := strings.NewReplacer(`\r`, "\r", `\n`, "\n").Replace(cells[0])
-		got := decodeAll([]byte(in), len(in))
-		if len(got) != 1 || !strings.HasPrefix(got[0], cells[1]) {
-			t.Errorf("%q: got %s, want %s…", in, got, cells[1])
-		}
-	}
-}
-
-func TestAnyPortionsGiveTheSameFrames(t *testing.T) {
-	in := []byte("N     +  45.1234 g  \r\n+   123.5[6]g  \n\x13+  -  \x00 g\r\n-------------------\r\nNom.  + 200.0000 g  \r\n-------------------\r\n+   12,345 g  \r+   1.00")
-	want := decodeAll(in, len(in))
-	for portion := 1; portion < len(in); portion++ {
-		if got := decodeAll(in, portion); strings.Join(got, "\n") != strings.Join(want, "\n") {
-			t.Fatalf("portions of %d:\n%s\nwant\n%s", portion, strings.Join(got, "\n"), strings.Join(want, "\n"))
-		}
-	}
-}
-
-func TestNothingInsideAReportIsAWeighing(t *testing.T) {
-	in := "-------------------\r\nSer.no.    12345678\r\n+ 200.0000 g  \r\n-------------------\r\n+  45.1234 g  \r\n"
-	var plain []string
-	NewDecoder(Options{}).Feed([]byte(in), func(f *Frame) {
-		if f.Kind == Weight && f.Plain {
-			plain = append(plain, f.Text())
-		}
-	})
-	if len(plain) != 1 || plain[0] != "45.1234" {
-		t.Errorf("plain weights %v, want 45.1234 alone", plain)
-	}
-}
-
-func TestAfterResyncTheFirstTailIsDropped(t *testing.T) {
-	d := NewDecoder(Options{})
-	d.Resync()
-	var got []string
-	d.Feed([]byte("5.1234 g  \r\n+  45.1234 g  \r\n"), func(f *Frame) { got = append(got, f.Text()) })
-	if len(got) != 1 || got[0] != "45.1234" {
-		t.Errorf("got %v, want the whole line alone", got)
-	}
-}
-
-func TestNoPrefixOfALineIsAWeight(t *testing.T) {
-	for _, line := range []string{"N     +  45.1234 g  \r\n", "+150.11775 g  \r\n", "   111.255 g  \r\n"} {
-		for cut := 1; cut < len(line)-1; cut++ {
-			for _, got := range decodeAll([]byte(line[:cut]), 1) {
-				if strings.Contains(got, `"kind":"weight"`) {
-					t.Errorf("%q is taken for a weight: %s", line[:cut], got)
-				}
+func TestDecodingAllocatesNothing(t *testing.T) {
+	for _, tt := range []struct{ name, line string }{
+		{"short", "+  45.1234 g  \r\n"},
+		{"long", "N     +  45.1234 g  \r\n"},
+		{"gross", "G#    -   0.0012 g  \r\n"},
+		{"brackets", "N     + 45.123[4]g  \r\n"},
+		{"moving", "N     +  45.1234    \r\n"},
+		{"unfilled", "N +45.1234 g\r\n"},
+		{"counting", "Qnt   +      253 pcs\r\n"},
+		{"overload", "Stat        High    \r\n"},
+		{"blank", "Stat                \r\n"},
+		{"odd parity", string(withParity(OddParity, "N     +  45.1234 g  \r\n"))},
+	} {
+		d, line, n := NewDecoder(Options{}), []byte(tt.line), 0
+		emit := func(f *Frame) {
+			if f.Kind != Damaged && f.Kind != Text {
+				n++
 			}
 		}
+		if got := testing.AllocsPerRun(1000, func() { d.Feed(line, emit) }); got != 0 || n == 0 {
+			t.Errorf("%s: %v allocations for each line, %d frames", tt.name, got, n)
+		}
 	}
 }
 
-// The byte rows of a 7-bit line read as 8 bits, from the parity rule itself.
+func withParity(p Parity, s string) []byte {
+	b := []byte(s)
+	p.Set(b)
+	return b
+}
+
+// The byte rows are the parity rule worked out by hand for "+  12.3456 g" CR LF.
 func TestParityIsStrippedAndNamed(t *testing.T) {
-	for _, parity := range []struct {
-		name string
-		odd  bool
-	}{{"odd parity", true}, {"even parity", false}} {
-		var in []byte
-		for _, c := range bytes.Repeat([]byte("+  12.3456 g  \r\n"), 4) {
-			ones := 0
-			for b := c; b > 0; b &= b - 1 {
-				ones++
-			}
-			if (ones%2 == 0) == parity.odd {
-				c |= 0x80
-			}
-			in = append(in, c)
-		}
-		d := NewDecoder(Options{})
-		n := 0
-		d.Feed(in, func(f *Frame) {
-			if f.Text() == "12.3456" && f.Stable {
+	for _, tt := range []struct {
+		name, bytes, diagnosis string
+		is                     Parity
+	}{
+		{"odd", "\xAB\x20\x20\x31\x32\xAE\xB3\x34\xB5\xB6\x20\x67\x20\x20\x0D\x8A", "looks like 7 data bits, odd parity", OddParity},
+		{"even", "\x2B\xA0\xA0\xB1\xB2\x2E\x33\xB4\x35\x36\xA0\xE7\xA0\xA0\x8D\x0A", "looks like 7 data bits, even parity", EvenParity},
+		{"mark", "\xAB\xA0\xA0\xB1\xB2\xAE\xB3\xB4\xB5\xB6\xA0\xE7\xA0\xA0\x8D\x8A", "looks like 7 data bits, mark parity", MarkParity},
+		{"none", "+  12.3456 g  \r\n", "", NoParity},
+	} {
+		d, n := NewDecoder(Options{}), 0
+		d.Feed(bytes.Repeat([]byte(tt.bytes), 4), func(f *Frame) {
+			if f.Text() == "12.3456" && f.Stable && string(f.Raw) == tt.bytes {
 				n++
 			}
 		})
-		if n != 4 || !strings.Contains(d.Diagnosis(), parity.name) {
-			t.Errorf("%d of 4 lines, diagnosis %q; want %s", n, d.Diagnosis(), parity.name)
+		if n != 4 || d.Diagnosis() != tt.diagnosis || d.Parity() != tt.is {
+			t.Errorf("%s: %d of 4 lines, diagnosis %q, parity %s", tt.name, n, d.Diagnosis(), d.Parity())
 		}
+		if got := withParity(tt.is, "+  12.3456 g  \r\n"); string(got) != tt.bytes {
+			t.Errorf("%s: set gives %x", tt.name, got)
+		}
+	}
+	if got := withParity(OddParity, "\x1bP\r\n"); !bytes.Equal(got, []byte{0x9B, 0xD0, 0x0D, 0x8A}) {
+		t.Errorf("ESC P with odd parity: %x", got)
 	}
 }
 
-func TestDecodingAWeightAllocatesNothing(t *testing.T) {
-	d := NewDecoder(Options{})
-	line := []byte("N     +  45.1234 g  \r\n")
-	n := 0
-	emit := func(f *Frame) {
-		if f.Kind == Weight {
-			n++
+func TestDiagnosisNamesAWrongSetting(t *testing.T) {
+	for _, tt := range []struct{ name, bytes, want string }{
+		{"wrong speed", strings.Repeat("\x06\x98\xe6\x00\x1e\xf8\x86\x60", 8), "unreadable bytes (40 of 64 are no text): wrong speed (baud)?"},
+		{"parity checked by the line", strings.Repeat("+\x00 4\x00.1\x00\r\n", 8), "24 of 80 bytes came as NUL: the balance sends with another parity than the line expects, or the speed is wrong"},
+		{"top bits without order", strings.Repeat("\xb1A\xe2\x63\xf7ab\x8a", 8), "unreadable bytes (32 of 64 have their top bit set and agree on no parity): wrong speed (baud)?"},
+		{"too few", "\x00\x00\x00", ""},
+		{"a good line", strings.Repeat("+  12.3456 g  \r\n", 8), ""},
+		{"good again for long", strings.Repeat("\x00", 100) + strings.Repeat("+  12.3456 g  \r\n", 4000), ""},
+	} {
+		d := NewDecoder(Options{})
+		d.Feed([]byte(tt.bytes), func(*Frame) {})
+		if got := d.Diagnosis(); got != tt.want {
+			t.Errorf("%s:\n got %q\nwant %q", tt.name, got, tt.want)
 		}
-	}
-	if got := testing.AllocsPerRun(1000, func() { d.Feed(line, emit) }); got != 0 || n == 0 {
-		t.Errorf("%v allocations for each line, %d weights", got, n)
 	}
 }
 
 func TestUnitsShiftToGramsExactly(t *testing.T) {
 	for in, want := range map[string]string{
-		"+111.25507 mg \r\n": "0.11125507", "+  1.23456 kg \r\n": "1234.56", "+      1.5 kg \r\n": "1500", "-   0.0012 g  \r\n": "-0.0012", "+      100 ct \r\n": "",
+		"+111.25507 mg \r\n": "0.11125507", "+  1.23456 kg \r\n": "1234.56", "+      1.5 kg \r\n": "1500", "-   0.0012 g  \r\n": "-0.0012",
+		"+      100 ct \r\n": "", "+  45.1234    \r\n": "45.1234", "+       45 kg \r\n": "45000", "+99999999999999999 kg\r\n": "", "+0.1234567890123456 mg\r\n": "",
 	} {
+		n := 0
 		NewDecoder(Options{}).Feed([]byte(in), func(f *Frame) {
-			if got := f.MassG().String(); got != want {
-				t.Errorf("%q: %q g, want %q", in, got, want)
+			if n++; f.MassG().String() != want {
+				t.Errorf("%q: %q g, want %q", in, f.MassG(), want)
+			}
+		})
+		if n != 1 {
+			t.Errorf("%q: %d frames", in, n)
+		}
+	}
+}
+
+func TestAnEndlessLineIsKeptInBoundsAndReportedOnce(t *testing.T) {
+	d := NewDecoder(Options{})
+	var got []string
+	hear := func(f *Frame) {
+		if f.Damage == TooLong && (len(f.Raw) != mostRaw || f.Dropped != 100_002-mostRaw) {
+			t.Errorf("raw %d, dropped %d", len(f.Raw), f.Dropped)
+		}
+		got = append(got, meaning(f))
+	}
+	for range 100 {
+		d.Feed(bytes.Repeat([]byte("5"), 1000), hear)
+	}
+	d.Feed([]byte("\r\n+   123.56 g  \r\n"), hear)
+	if want := "damaged too long|weight - +123.56 g stable plain"; strings.Join(got, "|") != want {
+		t.Errorf("got %q, want %q", got, want)
+	}
+}
+
+func TestAFrameAsJSON(t *testing.T) {
+	for _, tt := range []struct{ in, want string }{
+		{"N     +  123.5[6]g  \r\n", `{"kind":"weight","id":"N","text":"123.56","value":"123.56","sign":"+","unit":"g","stable":true,"plain":true,"unverified_digits":1,"raw":"N     +  123.5[6]g  \r\n"}`},
+		{"-   0,0012    \n", `{"kind":"weight","id":"","text":"0.0012","value":"-0.0012","sign":"-","unit":"","stable":false,"plain":true,"unverified_digits":0,"raw":"-   0,0012    \n"}`},
+		{"   111.255 g  \r\n", `{"kind":"weight","id":"","text":"111.255","value":"111.255","sign":"","unit":"g","stable":true,"plain":true,"unverified_digits":0,"raw":"   111.255 g  \r\n"}`},
+		{"Stat        H       \r\n", `{"kind":"status","status":"overload","raw":"Stat        H       \r\n"}`},
+		{"   Err 053    \r\n", `{"kind":"error","code":"053","raw":"   Err 053    \r\n"}`},
+		{"\r\n", `{"kind":"blank","raw":"\r\n"}`},
+		{"\xff\"\\\t\x7f\r\n", `{"kind":"damaged","damage":"unreadable","raw":"\u00ff\"\\\u0009\u007f\r\n"}`},
+		{"\xcf\xcb\r\n", `{"kind":"text","raw":"\u00cf\u00cb\r\n"}`},
+	} {
+		NewDecoder(Options{}).Feed([]byte(tt.in), func(f *Frame) {
+			if got := f.AppendJSON(nil); string(got) != tt.want || !json.Valid(got) {
+				t.Errorf("%q:\n got %s\nwant %s", tt.in, got, tt.want)
 			}
 		})
 	}
 }
 
-func FuzzPortions(f *testing.F) {
-	f.Add([]byte("N     +  45.1234 g  \r\n+ 1"), 3)
-	f.Fuzz(func(t *testing.T, in []byte, portion int) {
-		if portion < 1 {
-			portion = 1
+func TestCommandsAreFramed(t *testing.T) {
+	for c, want := range map[Command]string{Print: "\x1bP\r\n", Serial: "\x1bx2_\r\n", TareLoad: "\x1bf4_\r\n", PlaceStable: "\x1bL\r\n"} {
+		if got := string(c.Bytes()); got != want {
+			t.Errorf("%s: %q, want %q", c, got, want)
 		}
-		whole, parts := decodeAll(in, max(len(in), 1)), decodeAll(in, portion)
-		if strings.Join(whole, "\n") != strings.Join(parts, "\n") {
-			t.Errorf("%q in portions of %d: %v, whole %v", in, portion, parts, whole)
-		}
-	})
+	}
 }
 
-func FuzzRoundTrip(f *testing.F) {
-	f.Add(int64(451234), 4, true)
-	f.Fuzz(func(t *testing.T, unscaled int64, decimals int, long bool) {
-		if decimals < 0 || decimals > 7 || unscaled > 99999999 || unscaled < -99999999 {
-			t.Skip("does not fit nine columns")
+// The rows are the printed byte grids of the manuals.
+func TestEncodedLinesFollowTheGrids(t *testing.T) {
+	n := decimal.MustParse
+	for _, tt := range []struct {
+		d    Dialect
+		l    Line
+		want string
+	}{
+		{Dialect{}, Line{Value: n("1255.7"), Unit: "g"}, "+   1255.7 g  \r\n"},
+		{Dialect{}, Line{Value: n("150.11775")}, "+150.11775    \r\n"},
+		{Dialect{HidePlus: true}, Line{Value: n("111.255"), Unit: "g"}, "   111.255 g  \r\n"},
+		{Dialect{Long: true}, Line{ID: "G#", Value: n("1255.7"), Unit: "g"}, "G#    +   1255.7 g  \r\n"},
+		{Dialect{Long: true}, Line{ID: "N", Value: n("123.56"), Unit: "g", Unverified: 1}, "N     +  123.5[6]g  \r\n"},
+		{Dialect{Comma: true}, Line{Value: n("-123.56"), Unit: "g"}, "-   123,56 g  \r\n"},
+		{Dialect{}, Line{Value: n("123.56"), LastOff: true}, "+   123.5     \r\n"},
+		{Dialect{Long: true, Unfilled: true}, Line{ID: "N", Value: n("123.56"), Unit: "g"}, "N +123.56 g\r\n"},
+		{Dialect{}, Line{Status: "--"}, "      --      \r\n"},
+		{Dialect{}, Line{Status: "High"}, "      High    \r\n"},
+		{Dialect{}, Line{Status: "Cal.Ext."}, "     Cal.Ext. \r\n"},
+		{Dialect{}, Line{Status: "Err  12"}, "   Err  12    \r\n"},
+		{Dialect{}, Line{Status: "E 123"}, "     E 123    \r\n"},
+		{Dialect{Long: true}, Line{Status: "H"}, "Stat        H       \r\n"},
+		{Dialect{Long: true}, Line{Status: "ERR 123"}, "Stat     ERR 123    \r\n"},
+		{Dialect{Long: true}, Line{Status: "APP.ERR"}, "Stat     APP.ERR    \r\n"},
+		{Dialect{Long: true}, Line{}, "Stat                \r\n"},
+	} {
+		if got, err := tt.d.Append(nil, tt.l); err != nil || string(got) != tt.want {
+			t.Errorf("%+v: %q, %v; want %q", tt.l, got, err, tt.want)
 		}
-		value := decimal.New(unscaled, decimals)
-		line, err := Encode(nil, Line{ID: "N", Value: value, Unit: "g"}, long)
-		if err != nil {
-			t.Fatal(err)
+	}
+	for _, l := range []Line{{Value: n("1234567.890"), Unit: "g"}, {Value: n("1"), Unit: "gram"}, {Value: n("1.5"), Unverified: 2}, {Value: n("1"), Unverified: 1}, {ID: "toolong", Value: n("1")}} {
+		if got, err := (Dialect{Long: true}).Append([]byte("x"), l); err == nil || string(got) != "x" {
+			t.Errorf("%+v: %q, want an error", l, got)
 		}
-		NewDecoder(Options{}).Feed(line, func(f *Frame) {
-			if f.Kind != Weight || f.Value().Cmp(value) != 0 || f.Value().Decimals() != decimals || !f.Plain {
-				t.Errorf("%q comes back as %s", line, f.AppendJSON(nil))
-			}
-		})
-	})
+	}
+}
+
+func TestAnEncodedReportIsRead(t *testing.T) {
+	d := Dialect{Long: true}
+	line := encoded(t, d, Line{ID: "N", Value: decimal.MustParse("45.1234"), Unit: "g"})
+	in := d.AppendReport(bytes.Clone(line), Report{Date: "14.01.2011", Time: "09:43", Labels: [][2]string{{"Type", "ABCD"}, {"Ser.no.", "12345678"}}})
+	in = append(in, line...)
+	in = d.AppendReport(in, Report{Date: "14.01.2011", Time: "09:45", Signature: true})
+	in = append(in, line...)
+	if got := weightsOf(in); len(got) != 3 {
+		t.Errorf("%d weighings, want 3, of\n%s", len(got), in)
+	}
 }

@@ -42,7 +42,7 @@ func (f *Frame) parseWeight(line []byte) bool {
 		f.noNumber()
 	}
 	// a short line filled up to the width of the long one
-	if len(line) > bodyLength && line[0] != ' ' && f.columns(line) {
+	if len(line) == idLength+bodyLength && isSign(line[0]) && isBlank(line[bodyLength:]) && f.columns(line[:bodyLength]) {
 		return true
 	}
 	return f.words(line) || f.loosely(line)

@@ -40,10 +40,8 @@ func NewPattern(expression string) (*Pattern, error) {
 	if err != nil {
 		return nil, fmt.Errorf("%w: %s", ErrPattern, strings.TrimPrefix(err.Error(), "error parsing regexp: "))
 	}
-	for _, name := range re.SubexpNames() {
-		if name != "" && !slices.Contains(patternGroups, name) {
-			return nil, fmt.Errorf("%w: the group %q is none of sign, value, unit and stable", ErrPattern, name)
-		}
+	if err := checkGroups(re.SubexpNames()); err != nil {
+		return nil, err
 	}
 	p := &Pattern{re: re, sign: re.SubexpIndex("sign"), value: re.SubexpIndex("value"), unit: re.SubexpIndex("unit"), stable: re.SubexpIndex("stable")}
 	switch {
@@ -56,6 +54,21 @@ func NewPattern(expression string) (*Pattern, error) {
 		return nil, err
 	}
 	return p, nil
+}
+
+func checkGroups(names []string) error {
+	seen := map[string]bool{}
+	for _, name := range names {
+		switch {
+		case name == "":
+		case !slices.Contains(patternGroups, name):
+			return fmt.Errorf("%w: the group %q is none of sign, value, unit and stable", ErrPattern, name)
+		case seen[name]:
+			return fmt.Errorf("%w: the group %q is there twice", ErrPattern, name)
+		}
+		seen[name] = true
+	}
+	return nil
 }
 
 // checkStable refuses a group stable that holds the mark of either state, such as
