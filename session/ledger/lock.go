@@ -16,13 +16,16 @@ type lockFile struct{ f *os.File }
 
 var errHeld = errors.New("held by another process")
 
-// takeLock takes the lock of the ledger at path. A reader who may not make the file
-// (on a read-only disk) goes on without, with a nil lock.
+// takeLock takes the lock of the ledger at path. Where the lock file is not there and a
+// reader cannot make it (on a read-only disk), there is no daemon either: the reader
+// goes on with a nil lock.
 func takeLock(path string, exclusive bool) (*lockFile, error) {
 	name := path + ".lock"
 	f, err := os.OpenFile(name, os.O_RDWR|os.O_CREATE, 0o640)
 	if err != nil && !exclusive {
-		return nil, nil
+		if f, err = os.Open(name); errors.Is(err, os.ErrNotExist) {
+			return nil, nil
+		}
 	}
 	if err != nil {
 		return nil, explain("lock", path, err)
