@@ -28,9 +28,10 @@ type Book struct {
 	People    map[string]*Member // see people.go
 	Runs      map[string]*Run
 	Summaries map[string]*Summary
-	Order     []string // the runs' names in the order in which they were opened
-	Next      int64    // number of the next event
-	Unclean   bool     // the daemon started and has not stopped
+	Checks    map[string]Check // the latest check weighings
+	Order     []string         // the runs' names in the order in which they were opened
+	Next      int64            // number of the next event
+	Unclean   bool             // the daemon started and has not stopped
 }
 
 // Entry is a burette in the register with its history of changes.
@@ -42,7 +43,7 @@ type Entry struct {
 
 // NewBook gives an empty book.
 func NewBook() *Book {
-	return &Book{Burettes: map[string]*Entry{}, People: map[string]*Member{}, Runs: map[string]*Run{}, Summaries: map[string]*Summary{}}
+	return &Book{Burettes: map[string]*Entry{}, People: map[string]*Member{}, Runs: map[string]*Run{}, Summaries: map[string]*Summary{}, Checks: map[string]Check{}}
 }
 
 // BuretteBody is the body of the events of the register.
@@ -69,6 +70,8 @@ func (b *Book) Apply(line []byte) error {
 		return b.applyBurette(e)
 	case OperatorAdded, OperatorChanged, SignedIn, SignInRefused:
 		return b.applyPeople(e)
+	case LogSample:
+		return b.applySample(e)
 	case DaemonStarted, DaemonStopped:
 		b.Unclean = e.Kind == DaemonStarted
 	}
@@ -191,6 +194,9 @@ func (b *Book) OpenRun(q Request, setting Setting, identity Identity, local time
 	}
 	if busy := b.OpenRunAt(q.Station); busy != nil {
 		return nil, Refuse("station-busy", fmt.Sprintf("Run %s is %s on station %s.", busy.ID, busy.State, q.Station), "Finish, suspend or abandon it first.")
+	}
+	if err := b.mustBeChecked(q.Station, setting.CheckWeight, local); err != nil {
+		return nil, err
 	}
 	plan := q.Plan.withDefaults(entry.Burette)
 	if err := plan.Check(entry.Burette); err != nil {

@@ -6,15 +6,16 @@ import "tenthmark/calc"
 // into the run's first event, so that a later change of the configuration cannot
 // change what was done.
 type Setting struct {
-	Inputs     calc.Inputs `json:"inputs"`
-	Standard   string      `json:"standard,omitempty"` // whose limits apply, if not the burette's own
-	Rule       string      `json:"rule"`               // decision rule: simple, guarded or non-binary
-	Method     string      `json:"method,omitempty"`
-	Laboratory Laboratory  `json:"laboratory"`
-	Equipment  []Equipment `json:"equipment,omitempty"`
-	SignIn     bool        `json:"sign_in"` // whether people sign in with a secret
-	Review     bool        `json:"review"`  // whether another person has to review before publication
-	Software   string      `json:"software"`
+	Inputs      calc.Inputs `json:"inputs"`
+	Standard    string      `json:"standard,omitempty"` // whose limits apply, if not the burette's own
+	Rule        string      `json:"rule"`               // decision rule: simple, guarded or non-binary
+	Method      string      `json:"method,omitempty"`
+	Laboratory  Laboratory  `json:"laboratory"`
+	Equipment   []Equipment `json:"equipment,omitempty"`
+	CheckWeight string      `json:"check_weight,omitempty"` // the log that has to be within its tolerance on the same day
+	SignIn      bool        `json:"sign_in"`                // whether people sign in with a secret
+	Review      bool        `json:"review"`                 // whether another person has to review before publication
+	Software    string      `json:"software"`
 }
 
 // Laboratory is who issues the certificate.

@@ -26,6 +26,9 @@ func (d *daemon) chores(ctx context.Context) error {
 		case <-tick.C:
 		}
 		d.signOfLife(ctx)
+		if len(d.config.Logs) > 0 {
+			d.report("log files", d.writeLogs(ctx))
+		}
 		now := time.Now().In(zone)
 		if now.YearDay() != day {
 			day = now.YearDay()

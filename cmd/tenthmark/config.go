@@ -6,6 +6,7 @@ import (
 	"os"
 	"path/filepath"
 	"regexp"
+	"slices"
 	"sort"
 	"strconv"
 	"strings"
@@ -66,6 +67,7 @@ type runConfig struct {
 	Rule     string `toml:"rule"`
 	Standard string `toml:"standard"`
 	Method   string `toml:"method"`
+	Check    string `toml:"check_weight"` // label of the [[log]] that must be within its tolerance today
 }
 
 type logConfig struct {
@@ -280,6 +282,9 @@ func (c *config) checkLogs(text string) findings {
 			found = append(found, finding{c.file, fmt.Sprintf("The log %q names station %q, which is not there.", l.Label, l.Station), "Name one of the [[station]] sections.", lineOf(text, "log")})
 		}
 	}
+	if c.Run.Check != "" && !slices.ContainsFunc(c.Logs, func(l logConfig) bool { return l.Label == c.Run.Check && l.ToleranceG.IsSet() }) {
+		found = append(found, finding{c.file, fmt.Sprintf("check_weight = %q names no [[log]] with a tolerance.", c.Run.Check), "Give a [[log]] that label, a nominal_g and a tolerance_g.", lineOf(text, "check_weight")})
+	}
 	return found
 }
 
@@ -321,7 +326,7 @@ func (c *config) review() bool {
 // setting gives what a run on the station rests on; "" is no station in particular.
 func (c *config) setting(station string) session.Setting {
 	s := session.Setting{
-		Inputs: c.Inputs.apply(calc.DefaultInputs()), Standard: c.Run.Standard, Rule: c.Run.Rule, Method: c.Run.Method,
+		Inputs: c.Inputs.apply(calc.DefaultInputs()), Standard: c.Run.Standard, Rule: c.Run.Rule, Method: c.Run.Method, CheckWeight: c.Run.Check,
 		Laboratory: c.Laboratory, Equipment: c.Equipment, SignIn: c.Access.SignIn, Review: c.review(), Software: "tenthmark " + version(),
 	}
 	if st := c.station(station); st != nil {

@@ -29,6 +29,7 @@ type daemon struct {
 	outbox   *outbox
 	listener net.Listener
 	server   *http.Server
+	logged   int64 // the newest log sample in the drop's files; 0: not looked up yet
 }
 
 // newDaemon opens the ledger, replays it and binds the page's address. Nothing runs

@@ -18,6 +18,7 @@ import (
 type stations struct {
 	desk *desk.Desk
 	log  zerolog.Logger
+	logs []logConfig
 	all  []*acquire.Station
 	news chan news // what stations tell that nobody waits for
 
@@ -36,7 +37,7 @@ type news struct {
 const waitingNews = 256
 
 func newStations(c *config, d *desk.Desk, log zerolog.Logger) (*stations, error) {
-	s := &stations{desk: d, log: log, news: make(chan news, waitingNews), last: map[string]*bench.LastWeighing{}}
+	s := &stations{desk: d, log: log, logs: c.Logs, news: make(chan news, waitingNews), last: map[string]*bench.LastWeighing{}}
 	for _, cfg := range c.Stations {
 		one, err := acquire.NewStation(cfg, acquire.Options{Sink: &sink{s}, Log: log})
 		if err != nil {
@@ -59,6 +60,7 @@ func (s *stations) Run(ctx context.Context) error {
 		})
 	}
 	running.Go(func() { s.write(ctx) })
+	running.Go(func() { s.runLogs(ctx) })
 	running.Wait()
 	return ctx.Err()
 }
@@ -146,6 +148,7 @@ func (k *sink) Weight(ctx context.Context, w acquire.Settled) {
 		k.to.log.Error().Err(err).Str("station", w.Station).Str("mass_g", weight.MassG.String()).Msg("weight not taken: it could not be recorded")
 		return
 	}
+	k.to.settled(ctx, w)
 	k.to.mu.Lock()
 	defer k.to.mu.Unlock()
 	last := events[len(events)-1]
