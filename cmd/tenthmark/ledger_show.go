@@ -6,7 +6,9 @@ import (
 	"errors"
 	"fmt"
 	"io"
+	"strings"
 	"time"
+	"unicode"
 
 	"tenthmark/session"
 	"tenthmark/session/ledger"
@@ -97,8 +99,18 @@ func showEvent(w io.Writer, e ledger.Entry, exact bool) error {
 	if err != nil {
 		return fmt.Errorf("event %d: %w", e.Seq, err)
 	}
-	_, err = fmt.Fprintf(w, "%7d  %s  %-18s %-18s %-20s %s\n", h.Seq, localTime(h), h.Actor, h.Kind, h.Subject, content)
+	_, err = fmt.Fprintf(w, "%7d  %s  %-18s %-18s %-20s %s\n", h.Seq, localTime(h), printable(h.Actor), printable(h.Kind), printable(h.Subject), printable(string(content)))
 	return err
+}
+
+// printable keeps what could steer a terminal out of it.
+func printable(text string) string {
+	return strings.Map(func(r rune) rune {
+		if !unicode.IsPrint(r) {
+			return '\uFFFD'
+		}
+		return r
+	}, text)
 }
 
 // localTime shows the time as the bench's clock on the wall did, with its offset.

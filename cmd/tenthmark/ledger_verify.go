@@ -61,6 +61,9 @@ func verifyDrop(dir, keyFile string, asJSON bool, out, complaints io.Writer) int
 	}
 	fmt.Fprintf(out, "%s: %d events of %s proven by the signed checkpoint of %d events; %d files fit their hashes, %d documents fit an event.\n",
 		dir, r.Events, r.Origin, r.Size, r.Files, r.Documents)
+	if r.Documents == 0 {
+		fmt.Fprintln(out, "No event in this folder names its documents: whether they are the ones that were signed only the ledger can tell.")
+	}
 	return tellVerdict(out, r.OK())
 }
 

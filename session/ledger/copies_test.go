@@ -115,6 +115,7 @@ func TestFolder(t *testing.T) {
 		{"a document, the sums made to fit", edit("curve.csv", swap("-0.008", "-0.001")), true},
 		{"a document", edit("curve.csv", swap("-0.008", "-0.001")), false},
 		{"a document removed", func(dir string) { _ = os.Remove(filepath.Join(dir, "curve.csv")) }, false},
+		{"the sums removed", func(dir string) { _ = os.Remove(filepath.Join(dir, sumsName)) }, false},
 		{"a file added", func(dir string) { _ = os.WriteFile(filepath.Join(dir, "other.csv"), nil, 0o644) }, false},
 	} {
 		t.Run(tt.name, func(t *testing.T) {

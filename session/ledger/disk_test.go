@@ -204,3 +204,55 @@ func TestHotLog(t *testing.T) {
 	}
 	mustAppend(t, l2, plain)
 }
+
+// TestPageBreaksUnderTheDaemon spoils a page of the file while the daemon has it open. What
+// was saved before and lies elsewhere stays readable, and nothing is taken any more.
+func TestPageBreaksUnderTheDaemon(t *testing.T) {
+	opt := found(t, t.TempDir())
+	l, err := Open(t.Context(), opt)
+	if err != nil {
+		t.Fatal(err)
+	}
+	mustAppend(t, l, plains(200)...)
+	if err := l.enter(t.Context()); err != nil {
+		t.Fatal(err)
+	}
+	if err := l.fold(t.Context()); err != nil { // so that the newest pages are in the file
+		t.Fatal(err)
+	}
+	l.leave()
+	mustClose(t, l)
+	l = open(t, opt)
+	info, err := os.Stat(opt.Path)
+	if err != nil {
+		t.Fatal(err)
+	}
+	for at := int64(4096); at < info.Size(); at += 4096 {
+		overwrite(t, opt.Path, at, strings.Repeat("\xa5", 64))
+	}
+	if err := l.enter(t.Context()); err != nil {
+		t.Fatal(err)
+	}
+	_, err = l.db.ExecContext(t.Context(), `PRAGMA shrink_memory`) // forget the good pages
+	l.leave()
+	if err != nil {
+		t.Fatal(err)
+	}
+	for range 3 {
+		_, err = l.Append(t.Context(), plain)
+		if f := (*session.Fault)(nil); !errors.As(err, &f) || f.Hint == "" {
+			t.Fatalf("append: %v, want a fault with a hint", err)
+		}
+	}
+	r, err := Verify(t.Context(), copyOf(t, opt.Path), VerifyOptions{})
+	if err != nil || r.OK() {
+		t.Errorf("verify: %v, want findings", err)
+	}
+}
+
+func copyOf(t *testing.T, path string) string {
+	t.Helper()
+	to := filepath.Join(t.TempDir(), "copy.db")
+	copyFile(t, path, to)
+	return to
+}

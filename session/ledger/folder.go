@@ -205,10 +205,11 @@ func documentsIn(line []byte) map[string]string {
 // sumsName is the list of hashes, which lists every other file.
 const sumsName = "SHA256SUMS"
 
-// sums checks the folder's files against SHA256SUMS, when there is one.
+// sums checks the folder's files against SHA256SUMS.
 func (c *folderCheck) sums() error {
 	f, err := os.Open(filepath.Join(c.dir, sumsName))
 	if errors.Is(err, os.ErrNotExist) {
+		c.find(-1, "the file %s is missing", sumsName)
 		return nil
 	}
 	if err != nil {

@@ -15,6 +15,10 @@ import (
 func (l *Ledger) settle(ctx context.Context, c change, cause error) error {
 	l.broken, l.unclear = cause, &c
 	happened, err := l.recover(ctx)
+	switch session.FaultCode(err) {
+	case "ledger-damaged", "ledger-altered":
+		return errors.Join(err, cause)
+	}
 	if err != nil {
 		return &session.Fault{
 			Code: "ledger-unclear", Message: "The disk of the ledger failed, and it is not known whether the last entry was saved.",
