@@ -328,11 +328,8 @@ func forge(t *testing.T, opt Options, sign signer, bodies [][]byte) {
 	if err := os.Remove(opt.Path); err != nil {
 		t.Fatal(err)
 	}
-	if err := writeNew(opt.Path, "", 0o640); err != nil {
-		t.Fatal(err)
-	}
 	f := Founding{Path: opt.Path, Origin: testOrigin, KeyFile: opt.KeyFile}
-	if err := f.writeFirst(t.Context(), sign, bodies[0]); err != nil {
+	if err := f.appear(t.Context(), sign, bodies[0]); err != nil {
 		t.Fatal(err)
 	}
 	l, err := Open(t.Context(), opt)
@@ -441,5 +438,38 @@ func TestProofIsReadable(t *testing.T) {
 	}
 	if _, _, err := l.RunProof(t.Context(), []int64{99}); err == nil {
 		t.Error("proved an event that is not there")
+	}
+}
+
+// TestVerifyUnderLoad verifies the ledger while events are being appended.
+func TestVerifyUnderLoad(t *testing.T) {
+	l := open(t, found(t, t.TempDir()))
+	mustAppend(t, l, plains(3000)...)
+	ctx, stop := context.WithCancel(t.Context())
+	var writing sync.WaitGroup
+	writing.Go(func() {
+		for n := 0; ctx.Err() == nil; n++ {
+			if _, err := l.Append(context.WithoutCancel(ctx), plains(3)...); err != nil {
+				t.Error(err)
+				return
+			}
+			if n%50 == 0 {
+				if _, err := l.Checkpoint(context.WithoutCancel(ctx)); err != nil {
+					t.Error(err)
+					return
+				}
+			}
+		}
+	})
+	for range 5 {
+		r, err := l.Verify(t.Context(), VerifyOptions{})
+		if err != nil || !r.OK() || r.Events < 3001 {
+			t.Errorf("%d events (%v): %v", r.Events, err, r.First())
+		}
+	}
+	stop()
+	writing.Wait()
+	if _, err := l.Verify(ctx, VerifyOptions{}); !errors.Is(err, context.Canceled) {
+		t.Errorf("cancelled: %v", err)
 	}
 }

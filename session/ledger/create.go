@@ -37,7 +37,7 @@ func Create(ctx context.Context, f Founding, first func(seq int64, publicKey str
 	for _, part := range []struct {
 		path, text string
 		mode       os.FileMode
-	}{{f.KeyFile, secret + "\n", 0o600}, {f.KeyFile + ".pub", public + "\n", 0o644}, {f.Path, "", 0o640}} {
+	}{{f.KeyFile, secret + "\n", 0o600}, {f.KeyFile + ".pub", public + "\n", 0o644}} {
 		if err := writeNew(part.path, part.text, part.mode); err != nil {
 			return explain("create", part.path, err)
 		}
@@ -54,12 +54,15 @@ func (f Founding) refuse() error {
 	if err := checkOrigin(f.Origin); err != nil {
 		return err
 	}
+	hint := "A ledger is made once. Choose another path, or go on with the existing ledger."
 	for _, path := range []string{f.Path, f.Path + "-wal", f.KeyFile, f.KeyFile + ".pub"} {
 		if _, err := os.Lstat(path); err == nil {
-			return session.Refuse("ledger-exists", path+" exists already and is not overwritten.",
-				"A ledger is made once. Choose another path, or go on with the existing ledger.")
+			return session.Refuse("ledger-exists", path+" exists already and is not overwritten.", hint)
 		} else if !errors.Is(err, os.ErrNotExist) {
 			return explain("create", path, err)
+		}
+		if path == f.Path {
+			hint = "There is a key but no ledger at " + f.Path + ": perhaps an earlier init was interrupted. If the key signs no ledger, move it and its .pub away and call init again."
 		}
 	}
 	return refuseNetwork(f.Path)
@@ -90,7 +93,25 @@ func (f Founding) found(ctx context.Context, public string, first func(int64, st
 	if err != nil {
 		return err
 	}
-	return f.writeFirst(ctx, sign, body)
+	return f.appear(ctx, sign, body)
+}
+
+// appear builds the ledger beside and gives it its name at once, so that an interrupted
+// init leaves no half ledger.
+func (f Founding) appear(ctx context.Context, sign signer, body []byte) error {
+	beside := Founding{Path: f.Path + ".part", Origin: f.Origin}
+	for _, path := range []string{beside.Path, beside.Path + "-wal"} {
+		if err := removeIfThere(path); err != nil {
+			return explain("create", f.Path, err)
+		}
+	}
+	if err := writeNew(beside.Path, "", 0o640); err != nil {
+		return explain("create", f.Path, err)
+	}
+	if err := beside.writeFirst(ctx, sign, body); err != nil {
+		return errors.Join(err, removeIfThere(beside.Path))
+	}
+	return explain("create", f.Path, publishCopy(beside.Path, f.Path))
 }
 
 func (f Founding) writeFirst(ctx context.Context, sign signer, body []byte) error {

@@ -31,11 +31,33 @@ func (h Header) matches(f Filter) bool {
 	return (f.Subject == "" || f.Subject == h.Subject) && (f.Kind == "" || f.Kind == h.Kind) && (f.Actor == "" || f.Actor == h.Actor)
 }
 
+// pageEvents is how many events are looked up in one turn: a long search does not make a
+// weight wait.
+const pageEvents = 256
+
 // Events gives the events that the filter chooses, in order.
 func (s *store) Events(ctx context.Context, f Filter) ([]Entry, error) {
-	if f.Limit <= 0 || f.Limit > MaxLimit {
-		f.Limit = MaxLimit
+	left := f.Limit
+	if left <= 0 || left > MaxLimit {
+		left = MaxLimit
 	}
+	var out []Entry
+	for {
+		f.Limit = min(left, pageEvents)
+		page, err := s.page(ctx, f)
+		if err != nil {
+			return nil, err
+		}
+		out, left = append(out, page...), left-len(page)
+		if left == 0 || len(page) < f.Limit {
+			return out, nil
+		}
+		f.After = page[len(page)-1].Seq
+	}
+}
+
+// page takes one turn.
+func (s *store) page(ctx context.Context, f Filter) ([]Entry, error) {
 	if err := s.enter(ctx); err != nil {
 		return nil, err
 	}

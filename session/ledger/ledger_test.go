@@ -194,8 +194,15 @@ func TestCreateLeavesNothingBehind(t *testing.T) {
 			t.Errorf("%s is left (%v)", name, err)
 		}
 	}
+	if err := os.WriteFile(filepath.Join(dir, "ledger.db.part"), []byte("of an interrupted init"), 0o600); err != nil {
+		t.Fatal(err)
+	}
 	if err := Create(t.Context(), founding(dir), firstEvent); err != nil {
 		t.Errorf("second try: %v", err)
+	}
+	names, err := filepath.Glob(filepath.Join(dir, "*"))
+	if err != nil || len(names) != 4 { // ledger, lock, two keys
+		t.Errorf("the folder holds %v (%v)", names, err)
 	}
 }
 

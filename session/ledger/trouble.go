@@ -1,6 +1,7 @@
 package ledger
 
 import (
+	"context"
 	"errors"
 	"fmt"
 	"os"
@@ -20,7 +21,7 @@ func explain(op, path string, err error) error {
 	if err == nil {
 		return nil
 	}
-	if f := (*session.Fault)(nil); errors.As(err, &f) {
+	if f := (*session.Fault)(nil); errors.As(err, &f) || errors.Is(err, context.Canceled) || errors.Is(err, context.DeadlineExceeded) {
 		return err
 	}
 	f := &session.Fault{Err: fmt.Errorf("%s %s: %w", op, path, err)}
