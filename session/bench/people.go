@@ -158,7 +158,9 @@ func (b *Bench) me(c *call) error {
 		Operator string         `json:"operator"` // empty: nobody
 		Name     string         `json:"name,omitempty"`
 		Roles    []session.Duty `json:"roles"`
-	}{b.SignIn, who.name, "", []session.Duty{}}
+		// What a signature of each meaning says, for whoever is about to sign.
+		Statements map[string]string `json:"statements"`
+	}{b.SignIn, who.name, "", []session.Duty{}, statements()}
 	err = b.view(c.Context(), func(book *session.Book) error {
 		if m := book.People[who.name]; m != nil {
 			answer.Name, answer.Roles = m.PrintedName, m.Duties
@@ -169,6 +171,14 @@ func (b *Bench) me(c *call) error {
 		return err
 	}
 	return c.reply(http.StatusOK, answer)
+}
+
+func statements() map[string]string {
+	all := map[string]string{}
+	for _, meaning := range []string{session.MeaningPerformed, session.MeaningReviewed, session.MeaningTrail} {
+		all[meaning] = session.Statement(meaning)
+	}
+	return all
 }
 
 // memberAnswer is somebody in the list as others see them: without the binding of the

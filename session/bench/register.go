@@ -5,12 +5,14 @@ import (
 	"net/http"
 	"time"
 
+	"tenthmark/calc"
 	"tenthmark/session"
 )
 
 // entry is a burette in the register with what its runs say about it.
 type entry struct {
 	session.Entry
+	MPEML     float64      `json:"mpe_mL,omitempty"`     // limit of its class; left out where no table has one
 	LastRun   string       `json:"last_run,omitempty"`   // the run whose curve is in force
 	LastOn    session.Time `json:"last_on"`              // when that was signed; null: never calibrated
 	DueOn     session.Time `json:"due_on"`               // null: no interval agreed, or never calibrated
@@ -21,6 +23,9 @@ type entry struct {
 
 func describeEntry(book *session.Book, e *session.Entry, now time.Time) entry {
 	out := entry{Entry: *e}
+	if mpe, err := calc.Limit(e.Standard, e.Class, e.CapacityML.Float(), e.SubdivisionML.Float()); err == nil {
+		out.MPEML = mpe.LimitML
+	}
 	if s, err := book.CurveInForce(e.Name, now); err == nil {
 		out.LastRun, out.LastOn = s.ID, s.FinishedAt
 		if e.IntervalMonths > 0 {

@@ -2,6 +2,7 @@ package bench
 
 import (
 	"fmt"
+	"maps"
 	"net/http"
 	"slices"
 
@@ -10,10 +11,12 @@ import (
 	"tenthmark/session/desk"
 )
 
-// runAnswer is a run as it stands, and what the call recorded.
+// runAnswer is a run as it stands, what the call recorded, and which documents were
+// published.
 type runAnswer struct {
 	session.Document
-	Recorded []session.Event `json:"recorded,omitempty"`
+	Recorded  []session.Event `json:"recorded,omitempty"`
+	Documents []string        `json:"documents,omitempty"`
 }
 
 // openRequest is the body of the call that opens a run.
@@ -56,6 +59,9 @@ func (b *Bench) replyRun(c *call, status int, id string, recorded []session.Even
 	answer := runAnswer{Recorded: recorded}
 	err := b.Desk.ViewRun(c.Context(), id, func(r *session.Run) error {
 		answer.Document = r.Document()
+		if r.Publishing != nil {
+			answer.Documents = slices.Sorted(maps.Keys(r.Publishing.Files))
+		}
 		return nil
 	})
 	if err != nil {

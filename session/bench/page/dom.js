@@ -32,7 +32,7 @@ export function show(node, ...children) {
 
 /** time of day at the bench's own clock, as the browser has it. */
 export function clock(iso) {
-  return iso ? new Date(iso).toLocaleTimeString([], { hour: "2-digit", minute: "2-digit", second: "2-digit" }) : "";
+  return iso ? new Date(iso).toLocaleTimeString([], { hour: "2-digit", minute: "2-digit", second: "2-digit", hourCycle: "h23" }) : "";
 }
 
 export function day(iso) {
