@@ -12,8 +12,24 @@ import (
 // every variable, dense matrices, explicit inverses.
 func denseCurve(t *testing.T, in Inputs, points []float64, ds []Delivery, birge float64) (c *mat.VecDense, cov *mat.Dense, chi2 float64) {
 	t.Helper()
+	a, y := denseSystem(in, points, ds)
+	v := denseCovariance(in, ds, birge)
+	var w, wa, normal, inverse, right mat.Dense
+	must(t, w.Inverse(v))
+	wa.Mul(&w, a)
+	normal.Mul(a.T(), &wa)
+	must(t, inverse.Inverse(&normal))
+	right.Mul(wa.T(), y)
+	var theta, r mat.VecDense
+	theta.MulVec(&inverse, right.ColView(0))
+	r.MulVec(a, &theta)
+	r.SubVec(y, &r)
+	return &theta, &inverse, mat.Inner(&r, &w, &r)
+}
+
+func denseSystem(in Inputs, points []float64, ds []Delivery) (*mat.Dense, *mat.VecDense) {
 	n, p := len(ds), len(points)
-	a, y, v := mat.NewDense(n, p, nil), mat.NewVecDense(n, nil), mat.NewDense(n, n, nil)
+	a, y := mat.NewDense(n, p, nil), mat.NewVecDense(n, nil)
 	knots := append([]float64{0}, points...)
 	hat := func(k int, x float64) float64 { // tent around knot k
 		left, right := knots[k-1], math.Inf(1)
@@ -34,6 +50,12 @@ func denseCurve(t *testing.T, in Inputs, points []float64, ds []Delivery, birge 
 			a.Set(i, k-1, hat(k, d.End.ReadingML)-hat(k, d.Start.ReadingML))
 		}
 	}
+	return a, y
+}
+
+func denseCovariance(in Inputs, ds []Delivery, birge float64) *mat.Dense {
+	n := len(ds)
+	v := mat.NewDense(n, n, nil)
 	addOuter := func(scale float64, column []float64) {
 		x := mat.NewVecDense(n, column)
 		var outer mat.Dense
@@ -46,17 +68,7 @@ func denseCurve(t *testing.T, in Inputs, points []float64, ds []Delivery, birge 
 	for _, column := range commonColumns(in, ds) {
 		addOuter(1, column)
 	}
-	var w, wa, normal, inverse, right mat.Dense
-	must(t, w.Inverse(v))
-	wa.Mul(&w, a)
-	normal.Mul(a.T(), &wa)
-	must(t, inverse.Inverse(&normal))
-	right.Mul(wa.T(), y)
-	var theta, r mat.VecDense
-	theta.MulVec(&inverse, right.ColView(0))
-	r.MulVec(a, &theta)
-	r.SubVec(y, &r)
-	return &theta, &inverse, mat.Inner(&r, &w, &r)
+	return v
 }
 
 func must(t *testing.T, err error) {
