@@ -223,7 +223,7 @@ func (w *work) frame(f *protocol.Frame) {
 	} else if w.poll.hear(f, w.at) {
 		w.diagnoseAutoPrint()
 	}
-	w.observe(w.sample(f))
+	w.observe(sampleOf(f))
 	w.show(f)
 	if f.Kind == protocol.Error {
 		w.diagnose(Diagnosis{DiagnoseError, fmt.Sprintf("The balance reports error %s.", f.Code), "Its operating manual explains the code; it often asks for an adjustment or an empty pan."})
@@ -258,11 +258,11 @@ func (w *work) observe(s settle.Sample) {
 	}
 }
 
-// sample says what a line means for settling.
-func (w *work) sample(f *protocol.Frame) settle.Sample {
+// sampleOf says what a line means for settling.
+func sampleOf(f *protocol.Frame) settle.Sample {
 	switch {
 	case f.Kind == protocol.Weight && f.Plain && !f.InReport:
-		return settle.Sample{Kind: settle.Weight, MassG: f.MassG(), Unit: f.Unit, Stable: f.Stable || w.cfg.UnitNeverSent, Raw: f.Raw}
+		return settle.Sample{Kind: settle.Weight, MassG: f.MassG(), Unit: f.Unit, Stable: f.Stable, Raw: f.Raw}
 	case f.Kind == protocol.Blank:
 		return settle.Sample{Kind: settle.Blank}
 	case f.Kind == protocol.Status && (f.Condition == protocol.Overload || f.Condition == protocol.Underload):

@@ -29,6 +29,11 @@ type Options struct {
 	// display that flickers about a step spreads over 2 digits.
 	BandG float64
 
+	// DriftGS is the fastest even drift at which a weight is still taken, g/s; the band
+	// grows by it with the length of the dwell. An open vessel loses some milligrams a
+	// minute; 1 digit a second is 6 mg a minute on a balance that shows 0.1 mg.
+	DriftGS float64
+
 	// ReArmG is how far the load must move from the last taken weight, g. It is
 	// larger than what draught and bumps leave behind and smaller than one drop
 	// from a burette (some 30 to 50 mg), so that the last drop is not overlooked.
@@ -68,6 +73,7 @@ func DefaultOptions(readabilityG, repeatabilityG float64) Options {
 		Mode:      Settle,
 		DigitG:    readabilityG,
 		BandG:     bandG,
+		DriftGS:   readabilityG,
 		ReArmG:    max(2*bandG, min(100*trustG, belowOneDropG)),
 		ReArmHold: 400 * time.Millisecond,
 		Dwell:     2 * time.Second,
@@ -85,6 +91,8 @@ func (o Options) Check() error {
 		return errors.New("settle: the digit must be positive")
 	case !(o.BandG >= o.DigitG):
 		return errors.New("settle: the band must be at least one digit")
+	case !(o.DriftGS >= 0):
+		return errors.New("settle: the drift must not be negative")
 	case !(o.ReArmG > o.BandG):
 		return errors.New("settle: the re-arm step must be larger than the band")
 	case o.Dwell <= 0 || o.Gap <= 0 || o.ReArmHold < 0:

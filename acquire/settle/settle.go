@@ -14,8 +14,8 @@
 //     within the band.
 //  3. What still creeps (the tail of the balance's filter) waits; what drifts evenly
 //     (an open vessel that evaporates) is taken, after twice the dwell.
-//  4. The weight is the latest line that shows the median of the dwell, because one
-//     line may flicker and the middle one does not.
+//  4. The weight is the latest line that shows the median of the dwell's later half:
+//     one line may flicker, and the earlier half may still creep by the last digits.
 package settle
 
 import (
@@ -114,7 +114,8 @@ func (d *Detector) Observe(at time.Duration, s Sample) (Settled, bool) {
 		return Settled{}, false
 	}
 	d.window.add(at, massG, s)
-	d.window.shrinkToBand(d.opt.BandG)
+	d.window.shrinkToBand(d.opt.BandG, d.opt.DriftGS)
+	d.window.forget(2*d.dwell(), d.opt.MinLines)
 	d.arm.follow(&d.window, d.dwell())
 	if !d.arm.armed || !d.ripe() {
 		return Settled{}, false
@@ -179,17 +180,22 @@ func (d *Detector) interrupt(at time.Duration, kind Kind) {
 	}
 }
 
-// ripe says whether the window is a whole dwell of a load at rest.
+// ripe says whether the window is a whole dwell of a load at rest. An even drift needs
+// twice the dwell, to tell it from the long tail of a filter; so does a display that
+// flickers by more than a digit, because draught is slow and one dwell may lie on one
+// of its waves.
 func (d *Detector) ripe() bool {
 	w := &d.window
 	if w.len() < d.opt.MinLines || w.length() < d.dwell() {
 		return false
 	}
+	long := w.length() >= 2*d.dwell()
 	switch w.course(d.opt.DigitG) {
 	case level:
-		return true
+		_, noise := w.line()
+		return long || noise <= d.opt.DigitG/2
 	case drifting:
-		return w.length() >= 2*d.dwell()
+		return long
 	}
 	return false
 }
@@ -204,7 +210,7 @@ func (d *Detector) take(at time.Duration) Settled {
 		At: chosen.at, Taken: at, Trace: d.trace.since(at - traceSpan),
 		Dwell: Dwell{
 			Lines: w.len(), Length: w.length(), SlopeGS: slope, NoiseG: noise,
-			Waiting: max(0, w.start()-d.arm.moved), Beyond: max(0, at-w.start()-d.dwell()),
+			Waiting: max(0, w.restSince-d.arm.moved), Beyond: max(0, at-w.restSince-d.dwell()),
 		},
 	}
 	d.arm.taken(at, chosen.massG)

@@ -21,10 +21,14 @@ type entry struct {
 	rawLen int
 }
 
-// window holds the lines of the current dwell, oldest first. When it is full, every
-// second line is dropped: a fast balance needs no more to be judged.
+// window holds the lines of the current dwell, oldest first. They lie in the front
+// part of a larger array, so that dropping the oldest costs nothing; when a balance is
+// so fast that even that is full, every second line is dropped: no more are needed to
+// judge it.
 type window struct {
-	entries   []entry
+	array     []entry
+	entries   []entry       // a part of array
+	restSince time.Duration // since when the load is within the band; may be before the oldest line
 	low, high float64
 	scratch   []float64
 }
@@ -45,16 +49,29 @@ func (w *window) length() time.Duration {
 }
 
 func (w *window) add(at time.Duration, massG float64, s Sample) {
+	w.makeRoom()
+	if len(w.entries) == 0 {
+		w.low, w.high, w.restSince = massG, massG, at
+	}
+	w.low, w.high = min(w.low, massG), max(w.high, massG)
+	w.entries = w.entries[:len(w.entries)+1]
+	e := &w.entries[len(w.entries)-1]
+	e.at, e.massG, e.mass, e.unit = at, massG, s.MassG, s.Unit
+	e.rawLen = copy(e.raw[:], s.Raw)
+}
+
+// makeRoom moves the lines to the front of the array when its end is reached.
+func (w *window) makeRoom() {
+	if w.array == nil {
+		w.array = make([]entry, 2*windowSize)
+		w.entries = w.array[:0]
+	}
 	if len(w.entries) == windowSize {
 		w.thin()
 	}
-	if len(w.entries) == 0 {
-		w.low, w.high = massG, massG
+	if len(w.entries) == cap(w.entries) || len(w.entries) == 0 {
+		w.entries = w.array[:copy(w.array, w.entries)]
 	}
-	w.low, w.high = min(w.low, massG), max(w.high, massG)
-	e := entry{at: at, massG: massG, mass: s.MassG, unit: s.Unit}
-	e.rawLen = copy(e.raw[:], s.Raw)
-	w.entries = append(w.entries, e)
 }
 
 // thin drops every second line, never the first.
@@ -75,11 +92,11 @@ func (w *window) span() {
 	}
 }
 
-// shrinkToBand drops the oldest lines until the rest lies within the band: the load
-// is at rest since then.
-func (w *window) shrinkToBand(bandG float64) {
-	// Half a millionth of the band forgives the rounding of binary fractions.
-	if bandG *= 1 + 1e-6; w.high-w.low <= bandG {
+// shrinkToBand drops the oldest lines until the rest lies within the band, which is
+// wider by an even drift of driftGS: the load is at rest since then.
+func (w *window) shrinkToBand(bandG, driftGS float64) {
+	bandG *= 1 + 1e-6 // forgives the rounding of binary fractions
+	if w.high-w.low <= bandG+driftGS*w.length().Seconds() {
 		return
 	}
 	last := len(w.entries) - 1
@@ -87,34 +104,52 @@ func (w *window) shrinkToBand(bandG float64) {
 	low, high := w.entries[last].massG, w.entries[last].massG
 	for i := last; i >= 0; i-- {
 		low, high = min(low, w.entries[i].massG), max(high, w.entries[i].massG)
-		if high-low > bandG {
+		if high-low > bandG+driftGS*(w.entries[last].at-w.entries[i].at).Seconds() {
 			break
 		}
 		from = i
 	}
-	w.entries = append(w.entries[:0], w.entries[from:]...)
+	w.entries = w.entries[from:]
+	w.restSince = w.start()
 	w.span()
 }
 
-// middle gives the median of the masses, g; of an even count the lower one of the two.
+// forget drops lines that are older than so long: what they show is over.
+func (w *window) forget(longest time.Duration, fewest int) {
+	from := 0
+	last := w.entries[len(w.entries)-1].at
+	for len(w.entries)-from > fewest && last-w.entries[from+1].at >= longest {
+		from++
+	}
+	if from > 0 {
+		w.entries = w.entries[from:]
+		w.span()
+	}
+}
+
+// middle gives the median of the later half of the masses, g; of an even count the
+// lower one of the two.
 func (w *window) middle() float64 {
 	w.scratch = w.scratch[:0]
-	for i := range w.entries {
+	for i := w.half(); i < len(w.entries); i++ {
 		w.scratch = append(w.scratch, w.entries[i].massG)
 	}
 	slices.Sort(w.scratch)
 	return w.scratch[(len(w.scratch)-1)/2]
 }
 
-// median gives the latest line that shows the median.
+func (w *window) half() int { return len(w.entries) / 2 }
+
+// median gives the latest line that shows the median of the later half: one line may
+// flicker, and the earlier half may still creep by the last digits.
 func (w *window) median() *entry {
 	m := w.middle()
-	for i := len(w.entries) - 1; i > 0; i-- {
+	for i := len(w.entries) - 1; i > w.half(); i-- {
 		if w.entries[i].massG == m {
 			return &w.entries[i]
 		}
 	}
-	return &w.entries[0]
+	return &w.entries[w.half()]
 }
 
 // line fits a straight line: its slope in g/s and the standard deviation about it, g.
@@ -149,17 +184,18 @@ const (
 	creeping               // a movement that dies away: the tail of a filter
 )
 
-// course compares the means of the three thirds of the dwell. What moves by less
-// than a digit, or by less than the noise lets one see, is level. If the second step
-// is clearly smaller than the first, the movement dies away like the tail of a filter,
-// and what is still to come is the second step times r/(1 − r), r the ratio of the
-// two steps (the sum of the geometric series). Less than half a digit of that is level.
+// course compares the means of the three thirds of the dwell. When they differ by less
+// than a digit, or by less than the noise lets one see, it is level. When the second
+// step is clearly smaller than the first, the movement dies away like the tail of a
+// filter, and what is still to come is the second step times r/(1 − r), r the ratio of
+// the two steps (the sum of the geometric series). Less than half a digit of that is
+// level.
 func (w *window) course(digitG float64) course {
 	a, b, c := w.thirds()
 	_, noise := w.line()
 	n := float64(len(w.entries)) / 3
-	visible := max(digitG, 3*noise*math.Sqrt(2/n))
-	if math.Abs(c-a) <= visible {
+	visible := max(digitG, 2*noise*math.Sqrt(2/n))
+	if max(a, b, c)-min(a, b, c) <= visible {
 		return level
 	}
 	r := (c - b) / (b - a)

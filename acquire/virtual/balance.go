@@ -146,6 +146,14 @@ func (b *Balance) print() {
 	}
 }
 
+// Truth gives what the display would show of the present load without noise, draught,
+// hands, bumps and lag, g.
+func (b *Balance) Truth() float64 {
+	b.mu.Lock()
+	defer b.mu.Unlock()
+	return b.cell.calm() - b.zeroG - b.tareG
+}
+
 // Stable says whether the balance declares its value stable.
 func (b *Balance) Stable() bool {
 	b.mu.Lock()
