@@ -12,7 +12,9 @@ func (r *Run) apply(e Event, line []byte) error {
 		return fmt.Errorf("apply event %d %s to run %s: %w", e.Seq, e.Kind, e.Subject, err)
 	}
 	r.Last = e.Seq
-	if e.Kind != RunPublished && e.Kind != PublicationFailed {
+	switch e.Kind {
+	case RunPrepared, RunPublished, PublicationFailed: // what happens to the documents is not part of the record
+	default:
 		r.extendHash(line)
 	}
 	r.results = nil
@@ -76,6 +78,11 @@ func (r *Run) applyLife(e Event) error {
 		return r.applySigned(e, &r.Review)
 	case TrailReviewed:
 		return r.applySigned(e, &r.Trail)
+	case RunPrepared:
+		return with(e, func(b PublishedBody) error {
+			r.Prepared = &Publication{Event: e.Seq, PublishedBody: b, At: e.At}
+			return nil
+		})
 	case RunPublished:
 		return with(e, func(b PublishedBody) error {
 			r.State, r.Publishing = Published, &Publication{Event: e.Seq, PublishedBody: b, At: e.At}

@@ -101,7 +101,7 @@ func (b *Book) applyToRun(e Event, line []byte) error {
 func (e Event) concernsRun() bool {
 	switch e.Kind {
 	case WeightTaken, WeightSeen, ReadingMade, WaterTempMade, AmbientMade, FactAmended, DeliveryVoid, DoubtAnswered,
-		RunSuspended, RunResumed, RunAbandoned, RunReopened, RunFinished, RunReviewed, RunPublished, RunSuperseded,
+		RunSuspended, RunResumed, RunAbandoned, RunReopened, RunFinished, RunReviewed, RunPrepared, RunPublished, RunSuperseded,
 		TrailReviewed, PublicationFailed:
 		return true
 	}

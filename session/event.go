@@ -28,6 +28,7 @@ const (
 	RunReopened   Kind = "run.reopened"
 	RunFinished   Kind = "run.finished"
 	RunReviewed   Kind = "run.reviewed"
+	RunPrepared   Kind = "run.prepared" // its documents are made and about to appear in the drop
 	RunPublished  Kind = "run.published"
 	RunSuperseded Kind = "run.superseded"
 	TrailReviewed Kind = "trail.reviewed"

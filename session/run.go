@@ -36,8 +36,9 @@ type Run struct {
 	Changes      []Change // what was amended, voided, answered, suspended …, in order
 	Performed    *Signature
 	Review       *Signature
-	Trail        *Signature // the audit-trail review, if one was signed
-	Publishing   *Publication
+	Trail        *Signature   // the audit-trail review, if one was signed
+	Prepared     *Publication // what was last about to appear in the drop
+	Publishing   *Publication // what appeared there
 	SupersededBy string
 	First, Last  int64 // numbers of the run's first and latest event
 	FinishedAt   Time

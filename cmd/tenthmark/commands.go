@@ -12,6 +12,7 @@ func commands() []command {
 		{"serve", "run the daemon", runServe},
 		{"check", "check a configuration file", runCheck},
 		{"devices", "list the serial lines of this computer", runDevices},
+		{"listen", "show what a balance sends and how it is understood", runListen},
 		{"virtual", "run a virtual balance on a pseudo-terminal", runVirtual},
 		{"volume", "turn one weighing into one volume", runVolume},
 		{"ledger", "verify, show, export and back up the ledger", func(ctx context.Context, args []string, io stdio) int {

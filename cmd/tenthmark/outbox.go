@@ -2,34 +2,36 @@ package main
 
 import (
 	"context"
-	"crypto/sha256"
-	"encoding/hex"
-	"encoding/json"
 	"errors"
-	"fmt"
-	"os"
-	"path/filepath"
 	"sync"
 	"time"
 
+	"tenthmark/calc"
 	"tenthmark/session"
 	"tenthmark/session/bench"
 	"tenthmark/session/desk"
+	"tenthmark/session/publish"
 )
 
 // outbox puts signed runs into the drop, and tries again for as long as that fails.
 type outbox struct {
-	d *daemon
+	d    *daemon
+	drop publish.Drop
 
 	mu      sync.Mutex // over waiting alone
 	waiting map[string]bench.Waiting
 }
 
-func newOutbox(d *daemon) *outbox { return &outbox{d: d, waiting: map[string]bench.Waiting{}} }
+func newOutbox(d *daemon) *outbox {
+	return &outbox{d: d, drop: publish.Drop{Root: d.config.Publish.Folder}, waiting: map[string]bench.Waiting{}}
+}
 
 // Run publishes what is due whenever something happened, and what failed every few
 // seconds.
 func (o *outbox) Run(ctx context.Context) error {
+	if err := o.drop.Sweep(); err != nil {
+		o.d.log.Warn().Err(err).Msg("half-built folders left in the drop")
+	}
 	notices, stop := o.d.desk.Listen()
 	defer stop()
 	again := time.NewTicker(5 * time.Second)
@@ -106,36 +108,63 @@ func (o documents) Waiting() []bench.Waiting {
 	return list
 }
 
-// publish builds a run's documents, puts them into the drop and records that.
+// publish builds a run's documents, records that they are about to appear, puts them
+// into the drop and records that. After an interruption it finds out what had appeared.
 func (o *outbox) publish(ctx context.Context, id string) error {
 	var doc session.Document
-	err := o.d.desk.ViewRun(ctx, id, func(r *session.Run) error {
+	var curve *calc.Curve
+	var prepared *session.Publication
+	err := o.d.desk.ViewRun(ctx, id, func(r *session.Run) (err error) {
+		prepared = r.Prepared
 		doc = r.Document()
-		return nil
+		curve, err = r.Curve()
+		return err
 	})
 	if err != nil {
 		return err
 	}
+	if prepared != nil && o.drop.Holds(prepared.Folder, prepared.Files) {
+		return o.d.desk.Published(ctx, id, prepared.PublishedBody)
+	}
+	body, files, err := o.build(ctx, doc, curve)
+	if err != nil {
+		return err
+	}
+	if err := o.d.desk.Prepared(ctx, id, body); err != nil {
+		return err
+	}
+	if _, err := o.drop.Put(body.Folder, files); err != nil {
+		return err
+	}
+	return o.d.desk.Published(ctx, id, body)
+}
+
+// build makes the documents with the events' proofs against a fresh checkpoint.
+func (o *outbox) build(ctx context.Context, doc session.Document, curve *calc.Curve) (session.PublishedBody, []publish.File, error) {
+	lines, err := (record{o.d.ledger}).RunLines(ctx, doc.Run.ID)
+	if err != nil {
+		return session.PublishedBody{}, nil, err
+	}
+	seqs := make([]int64, len(lines))
+	for i, line := range lines {
+		e, err := session.DecodeEvent(line)
+		if err != nil {
+			return session.PublishedBody{}, nil, err
+		}
+		seqs[i] = e.Seq
+	}
 	checkpoint, err := o.d.ledger.Checkpoint(ctx)
 	if err != nil {
-		return err
+		return session.PublishedBody{}, nil, err
+	}
+	events, proof, err := o.d.ledger.RunProof(ctx, seqs)
+	if err != nil {
+		return session.PublishedBody{}, nil, err
 	}
 	doc.Run.State, doc.Awaits, doc.Prompt, doc.Ledger.Checkpoint = session.Published, nil, "", string(checkpoint)
-	text, err := json.MarshalIndent(doc, "", "  ")
+	files, err := publish.Files(publish.Material{Document: doc, Curve: curve, EventsJSONL: events, ProofJSON: proof, Paper: o.d.config.Publish.Paper})
 	if err != nil {
-		return fmt.Errorf("run.json: %w", err)
+		return session.PublishedBody{}, nil, err
 	}
-	sum := sha256.Sum256(text)
-	final := filepath.Join(o.d.config.Publish.Folder, o.d.folderName(id))
-	if err := os.MkdirAll(final, 0o755); err != nil {
-		return err
-	}
-	if err := os.WriteFile(filepath.Join(final, "run.json"), text, 0o644); err != nil {
-		return err
-	}
-	sums := fmt.Sprintf("%s  run.json\n", hex.EncodeToString(sum[:]))
-	if err := os.WriteFile(filepath.Join(final, "SHA256SUMS"), []byte(sums), 0o644); err != nil {
-		return err
-	}
-	return o.d.desk.Published(ctx, id, session.PublishedBody{Folder: filepath.Base(final), Files: map[string]string{"run.json": hex.EncodeToString(sum[:])}, Checkpoint: string(checkpoint)})
+	return session.PublishedBody{Folder: o.d.folderName(doc.Run.ID), Files: publish.Sums(files), Checkpoint: string(checkpoint)}, files, nil
 }

@@ -20,6 +20,15 @@ func (d *Desk) Due(ctx context.Context) ([]string, error) {
 	return due, err
 }
 
+// Prepared records what is about to appear in the drop, so that after an interruption
+// it can be told from somebody else's folder.
+func (d *Desk) Prepared(ctx context.Context, id string, body session.PublishedBody) error {
+	_, err := d.DoRun(ctx, session.Daemon, id, func(*session.Run) ([]session.Draft, error) {
+		return []session.Draft{{Kind: session.RunPrepared, Subject: id, Body: body}}, nil
+	})
+	return err
+}
+
 // Published records that a run lies in the drop, and that the run it supersedes, if
 // any, is superseded.
 func (d *Desk) Published(ctx context.Context, id string, body session.PublishedBody) error {

@@ -1,0 +1,63 @@
+// Package publish makes the documents of a finished run and puts them into the drop:
+// whole, once, and only when everything is durable.
+//
+// The documents are functions of the run's record alone, so that they come out the
+// same when they are built again. The package decides nothing about the run and
+// computes nothing: it rounds, draws and writes.
+package publish
+
+import (
+	"encoding/json"
+	"fmt"
+
+	"tenthmark/calc"
+	"tenthmark/session"
+)
+
+// Material is what the documents of a run are made from.
+type Material struct {
+	Document    session.Document
+	Curve       *calc.Curve
+	EventsJSONL []byte // the run's events as stored
+	ProofJSON   []byte // their inclusion proofs
+	Paper       string // A4 or Letter
+	Logo        []byte // PNG, may be empty
+}
+
+// document names a file and how it is made.
+type document struct {
+	name string
+	make func(Material) ([]byte, error)
+}
+
+// documents is every file of a run's folder but the list of hashes.
+var documents = []document{
+	{"run.json", runJSON},
+	{"deliveries.csv", deliveriesCSV},
+	{"curve.csv", curveCSV},
+	{"lookup.csv", lookupCSV},
+	{"curve.svg", curveSVG},
+	{"events.jsonl", func(m Material) ([]byte, error) { return m.EventsJSONL, nil }},
+	{"proof.json", func(m Material) ([]byte, error) { return m.ProofJSON, nil }},
+}
+
+// Files makes all documents of a run.
+func Files(m Material) ([]File, error) {
+	files := make([]File, 0, len(documents))
+	for _, d := range documents {
+		b, err := d.make(m)
+		if err != nil {
+			return nil, fmt.Errorf("make %s of run %s: %w", d.name, m.Document.Run.ID, err)
+		}
+		files = append(files, File{d.name, b})
+	}
+	return files, nil
+}
+
+func runJSON(m Material) ([]byte, error) {
+	b, err := json.MarshalIndent(m.Document, "", "  ")
+	if err != nil {
+		return nil, err
+	}
+	return append(b, '\n'), nil
+}
