@@ -51,7 +51,7 @@ func TestListenPrintsOneObjectForEachLine(t *testing.T) {
 func TestListenShowsLinesForPeople(t *testing.T) {
 	code, out, errs := listenTo("N     +   123.56 g  \r\nNom.  + 200.0000 g  \r\n+  45.134 g  \r\n", "-")
 	want := "weight   N          +123.56 g    stable                 N·····+···123.56·g··␍␊\n" +
-		"weight   Nom.      +200.0000 g    stable, no weighing     Nom.··+·200.0000·g··␍␊\n" +
+		"weight   Nom.     +200.0000 g    stable, no weighing    Nom.··+·200.0000·g··␍␊\n" +
 		"damaged  the columns do not fit                         +··45.134·g··␍␊\n"
 	if code != exitDone || out != want || errs != "1 damaged, 2 weight; 59 bytes\n" {
 		t.Errorf("code %d\n got\n%s\nwant\n%s\n%q", code, out, want, errs)
