@@ -34,6 +34,7 @@ type checker struct {
 	leaf    []byte // scratch
 	nodes   []tlog.Hash
 	halted  bool // replay stopped at its first error
+	lost    bool // the numbers of the rows make no sense any more
 }
 
 // outsideHead is a checkpoint brought along.
@@ -103,6 +104,10 @@ func (c *checker) small(ctx context.Context) error {
 	var err error
 	if c.size, err = countEvents(ctx, c.s.db); err != nil {
 		return c.broken("events", err)
+	}
+	var before int64
+	if err := c.s.db.QueryRowContext(ctx, `SELECT count(*) FROM event WHERE seq < 0`).Scan(&before); err != nil || before > 0 {
+		c.find(-1, "%d events stand before the first (%v)", before, err)
 	}
 	if c.stored, err = c.s.checkpointRows(ctx); err != nil {
 		if err := c.broken("checkpoints", err); err != nil {
@@ -191,9 +196,8 @@ func (c *checker) read(ctx context.Context, batches chan<- []row) error {
 
 // event checks one row and everything that speaks about the tree of that size.
 func (c *checker) event(r row) {
-	for c.edge.size < r.seq {
-		c.find(c.edge.size, "is missing")
-		c.push(tlog.Hash{})
+	if !c.bridge(r.seq) {
+		return
 	}
 	c.leaf = append(append(c.leaf[:0], 0), r.body...)
 	before := len(c.report.Findings)
@@ -216,6 +220,28 @@ func (c *checker) event(r row) {
 	}
 	c.replay(r, len(c.report.Findings) == before)
 	c.heads(r.seq + 1)
+}
+
+// maxGap is the largest number of missing events that is bridged, so that what comes after
+// them can still be judged. A row whose number is beyond that has a wrong number.
+const maxGap = 10_000
+
+// bridge steps over missing events. It is false when there is no use in going on.
+func (c *checker) bridge(seq int64) bool {
+	if c.lost {
+		return false
+	}
+	if seq-c.edge.size > maxGap {
+		c.find(c.edge.size, "is missing: the next one is number %d", seq)
+		c.lost = true
+		return false
+	}
+	for c.edge.size < seq {
+		c.find(c.edge.size, "is missing")
+		c.push(tlog.Hash{})
+		c.halted = true
+	}
+	return true
 }
 
 func (c *checker) push(leaf tlog.Hash) []tlog.Hash {

@@ -43,10 +43,7 @@ func Create(ctx context.Context, f Founding, first func(seq int64, publicKey str
 		}
 		undo = append(undo, part.path)
 	}
-	if err := f.found(ctx, public, first); err != nil {
-		return err
-	}
-	return nil
+	return f.found(ctx, public, first)
 }
 
 // refuse names the reasons not to begin.

@@ -157,6 +157,8 @@ func TestEveryCrimeIsFound(t *testing.T) {
 		}, 9},
 		{"a row inserted", []string{`UPDATE event SET seq = -seq - 1 WHERE seq >= 20`, `UPDATE event SET seq = -seq WHERE seq < 0`, `INSERT INTO event SELECT 20, body, nodes FROM event WHERE seq = 19`}, 20},
 		{"a row appended", []string{`INSERT INTO event SELECT 1101, body, nodes FROM event WHERE seq = 19`}, 1101},
+		{"a row far away", []string{`INSERT INTO event SELECT 4611686018427387904, body, nodes FROM event WHERE seq = 19`}, 1101},
+		{"a row before the first", []string{`INSERT INTO event SELECT -3, body, nodes FROM event WHERE seq = 19`}, -1},
 		{"the tail cut", []string{`DELETE FROM event WHERE seq > 1090`, `DELETE FROM checkpoint WHERE size > 1090`}, 1091},
 		{"the tail cut with its checkpoint kept", []string{`DELETE FROM event WHERE seq > 1090`}, 1091},
 		{"all checkpoints removed", []string{`DELETE FROM checkpoint`}, -1},
