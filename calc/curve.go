@@ -11,7 +11,11 @@ import (
 // correction is interpolated and never extrapolated.
 var ErrOutsideCurve = errors.New("outside the calibrated range")
 
-// BirgeRule is how scatter beyond the facts' own uncertainty is treated.
+// BirgeRule is how scatter beyond the facts' own uncertainty is treated. It keeps the
+// coverage when the stated uncertainties are right. Few degrees of freedom cannot show
+// that they are too small: with two replicates at five points and 1.5 times the stated
+// scatter, the 95 % interval holds the truth in some 89 % of runs; with five replicates
+// in 94 %. So state the reading uncertainty of the operator who reads.
 const BirgeRule = "If chi² of the residuals exceeds the 95 % point of its distribution, the part of the covariance that comes from single facts is multiplied by chi²/nu and has nu degrees of freedom; otherwise it stands as the facts give it."
 
 // birgeLevel: see BirgeRule.

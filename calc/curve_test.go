@@ -67,6 +67,27 @@ func TestPatternsAgree(t *testing.T) {
 	}
 }
 
+// A balance and a reading without error beside a poor thermometer, and the other way
+// round: the equations stay solvable, to a hundredth of u.
+func TestFitExtremeUncertainties(t *testing.T) {
+	for name, change := range map[string]func(*Inputs){
+		"facts exact":  func(in *Inputs) { in.UWeighingG, in.UReadingML, in.UDeliveryML, in.UWaterTempC = 1e-9, 1e-9, 0, 0 },
+		"facts poor":   func(in *Inputs) { in.UWeighingG, in.UReadingML, in.UDeliveryML = 1, 10, 10 },
+		"common exact": func(in *Inputs) { in.UThermometerC, in.UAirDensityRel, in.UWaterDensityRel = 0, 0, 0 },
+		"common poor":  func(in *Inputs) { in.UThermometerC, in.UAirDensityRel, in.UWaterDensityRel = 10, 0.2, 1e-2 },
+	} {
+		b, h := quietBench(patterns[0], 6)
+		in := DefaultInputs()
+		change(&in)
+		c := fitted(t, in, b.pointsML, b.draw(h))
+		for _, p := range c.Points {
+			if math.Abs(p.CorrectionML-h.at(p.ReadingML)) > 0.01*p.UML+1e-7 || !(p.UML > 0) {
+				t.Errorf("%s: %+v, true %.9f", name, p, h.at(p.ReadingML))
+			}
+		}
+	}
+}
+
 // classical is equal replicates at nominal readings and one water temperature.
 func classical(p pattern, seed uint64) (*bench, []Delivery) {
 	b := newBench(p, seed)

@@ -18,6 +18,7 @@ type bench struct {
 	pointsML []float64
 	pattern  pattern
 	rate     float64 // of the hidden curve's wandering, mL²/mL
+	scatter  float64 // of readings and deliveries, as a multiple of what the inputs state
 	jitterML float64 // the operator stops this close to the mark, at or above it
 	rng      *rand.Rand
 }
@@ -84,7 +85,7 @@ func (b *bench) draw(h hidden) []Delivery {
 	e := b.drawShared()
 	next := int64(0)
 	number := func() int64 { next++; return next }
-	reading := func(observed float64) fact { return fact{number(), observed, observed + n()*in.UReadingML} }
+	reading := func(observed float64) fact { return fact{number(), observed, observed + n()*in.UReadingML*b.scatter} }
 	weighing := func(balance float64) fact { return fact{number(), balance + n()*in.UWeighingG, balance} }
 	air := Ambient{Fact: number(), AirTempC: 21.3, PressureHPa: 1004.2, HumidityPct: 45}
 	vesselG := 45.0
@@ -103,7 +104,7 @@ func (b *bench) draw(h hidden) []Delivery {
 			}
 			end := reading(v - b.jitterML*b.rng.Float64())
 			waterC := 21.4 + 0.1*n()
-			true20 := end.true - start.true + h.at(max(end.true, 0)) - h.at(max(start.true, 0)) + n()*in.UDeliveryML
+			true20 := end.true - start.true + h.at(max(end.true, 0)) - h.at(max(start.true, 0)) + n()*in.UDeliveryML*b.scatter
 			after := weighing(load.true + b.balanceG(true20, waterC, air, e))
 			ds = append(ds, Delivery{
 				Delivery: len(ds) + 1, PointML: v, Replicate: r + 1,
@@ -119,7 +120,7 @@ func (b *bench) draw(h hidden) []Delivery {
 
 func newBench(p pattern, seed uint64) *bench {
 	return &bench{
-		in: DefaultInputs(), pointsML: []float64{10, 20, 30, 40, 50}, pattern: p, rate: 1e-5, jitterML: 0.05,
+		in: DefaultInputs(), pointsML: []float64{10, 20, 30, 40, 50}, pattern: p, rate: 1e-5, scatter: 1, jitterML: 0.05,
 		rng: rand.New(rand.NewPCG(seed, 1)),
 	}
 }

@@ -33,7 +33,8 @@ type solution struct {
 	order []int         // row of the model behind each row of the solution
 	low   *skyline      // N = low·lowᵀ
 	x     *mat.Dense    // low⁻¹·[A B]
-	chol  *mat.Cholesky // of xᵀx, with 1 added to the diagonal at z
+	chol  *mat.Cholesky // of xᵀx, with 1 added to the diagonal at z, scaled to a diagonal of 1
+	scale []float64     // what the columns of x were multiplied by for that
 	rest  []float64     // low⁻¹·(y − A·c − B·z)
 }
 
@@ -116,15 +117,12 @@ func (m *model) orderRows(narrow [][]share) []int {
 	return order
 }
 
-// normalEquations solves for c and z.
+// normalEquations solves for c and z. The columns are brought to the same size first:
+// a balance and a meniscus may differ by ten powers of ten from what the run shares.
 func (s *solution) normalEquations(y *mat.Dense, p, q int) error {
-	normal := mat.NewSymDense(p+q, nil)
-	normal.SymOuterK(1, s.x.T())
-	for k := p; k < p+q; k++ {
-		normal.SetSym(k, k, normal.At(k, k)+1)
-	}
+	normal := s.scaledNormal(p, q)
 	s.chol = &mat.Cholesky{}
-	if !s.chol.Factorize(normal) || s.chol.Cond() > 1e15 {
+	if !s.chol.Factorize(normal) || s.chol.Cond() > 1e14 {
 		return s.m.undetermined()
 	}
 	var right, theta, fitted mat.Dense
@@ -132,10 +130,11 @@ func (s *solution) normalEquations(y *mat.Dense, p, q int) error {
 	if err := s.chol.SolveTo(&theta, &right); err != nil {
 		return fmt.Errorf("normal equations: %w", err)
 	}
-	all := mat.Col(nil, 0, &theta)
 	fitted.Mul(s.x, &theta)
 	s.rest = mat.Col(nil, 0, y)
 	floats.Sub(s.rest, mat.Col(nil, 0, &fitted))
+	all := mat.Col(nil, 0, &theta)
+	floats.Mul(all, s.scale)
 	s.c = all[:p]
 	s.chi2 = floats.Dot(s.rest, s.rest) + floats.Dot(all[p:], all[p:])
 	var inverse mat.SymDense
@@ -143,8 +142,35 @@ func (s *solution) normalEquations(y *mat.Dense, p, q int) error {
 		return fmt.Errorf("covariance: %w", err)
 	}
 	s.cov = mat.NewSymDense(p, nil)
-	s.cov.CopySym(inverse.SliceSym(0, p))
+	for i := range p {
+		for j := i; j < p; j++ {
+			s.cov.SetSym(i, j, inverse.At(i, j)*s.scale[i]*s.scale[j])
+		}
+	}
 	return nil
+}
+
+// scaledNormal scales the columns of x and gives the normal equations' matrix.
+func (s *solution) scaledNormal(p, q int) *mat.SymDense {
+	normal := mat.NewSymDense(p+q, nil)
+	normal.SymOuterK(1, s.x.T())
+	s.scale = make([]float64, p+q)
+	for k := range s.scale {
+		if k >= p {
+			normal.SetSym(k, k, normal.At(k, k)+1)
+		}
+		s.scale[k] = 1 / math.Sqrt(normal.At(k, k))
+	}
+	for i := range s.scale {
+		for j := i; j < p+q; j++ {
+			normal.SetSym(i, j, normal.At(i, j)*s.scale[i]*s.scale[j])
+		}
+	}
+	n, _ := s.x.Dims()
+	for i := range n {
+		floats.Mul(s.x.RawRowView(i), s.scale)
+	}
+	return normal
 }
 
 // undetermined names the point that the deliveries leave open.
@@ -192,10 +218,11 @@ func (s *solution) influence() (*influence, error) {
 	column := make([]float64, cols)
 	for at, row := range s.order {
 		mat.Col(column, at, full)
-		out.gain.SetCol(row, column[:p])
 		out.pull[row] = rest.At(at, 0)
 		out.precision[row] = inverse[at]
 		out.leverage[row] = inverse[at] - floats.Dot(q.RawRowView(at), column)
+		floats.Mul(column, s.scale)
+		out.gain.SetCol(row, column[:p])
 	}
 	return out, nil
 }
