@@ -240,7 +240,9 @@ func (l *laboratory) call(method, path, body string, change ...func(*http.Reques
 	if err != nil {
 		l.t.Fatal(err)
 	}
-	return answer{resp.StatusCode, resp.Header, text}
+	a := answer{resp.StatusCode, resp.Header, text}
+	l.checkDescribed(req, a)
+	return a
 }
 
 // must is call for what has to work.
@@ -343,3 +345,6 @@ func TestARunThroughTheDoor(t *testing.T) {
 		t.Errorf("after review: %s", v.Run.State)
 	}
 }
+
+// logTo writes a daemon's log into a test.
+func logTo(w io.Writer) zerolog.Logger { return zerolog.New(w) }
