@@ -5,6 +5,7 @@ import (
 	"time"
 
 	"tenthmark/acquire/settle"
+	"tenthmark/calc/decimal"
 	"tenthmark/session"
 )
 
@@ -31,13 +32,15 @@ func (s Settled) Weight() session.Weight {
 
 // Live is what the balance shows at a moment.
 type Live struct {
-	Text     string    // the number as sent, with its sign; "" when the display shows none
-	Unit     string    // as sent; "" while the balance does not show stability
-	Stable   bool      // as the balance marks it
-	Status   string    // "", overload, underload, adjusting, blank, report or the text of an error
-	At       time.Time // when the line came
-	Progress float64   // how far the dwell has come, 0 … 1
-	Armed    bool      // whether the load is taken once it has come to rest
+	Text     string         // the number as sent, with its sign; "" when the display shows none
+	Unit     string         // as sent; "" while the balance does not show stability
+	Stable   bool           // as the balance marks it
+	Status   string         // "", overload, underload, adjusting, blank, report or the text of an error
+	MassG    decimal.Number // the number in g; absent when the line is no plain weight
+	Raw      []byte         // the line, exactly as it came
+	At       time.Time      // when the line came
+	Progress float64        // how far the dwell has come, 0 … 1
+	Armed    bool           // whether the load is taken once it has come to rest
 }
 
 // Diagnosis names something that is not an outage and that the operator should know.

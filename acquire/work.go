@@ -28,6 +28,7 @@ type work struct {
 	ready   bool // the interview is over: weights count
 	shown   time.Time
 	stable  bool
+	status  string
 	last    time.Time // of the last line that was understood
 	damaged int       // lines in a row that could not be read
 	taken   []settle.Settled
@@ -287,15 +288,20 @@ func (w *work) deliver(ctx context.Context) error {
 
 // show tells what the balance shows, not too often.
 func (w *work) show(f *protocol.Frame) {
-	live := Live{
-		Text: valueText(f), Unit: f.Unit, Stable: f.Kind == protocol.Weight && f.Stable, Status: statusText(f),
-		At: w.wall().Add(-time.Since(w.at)), Progress: w.detector.Progress(), Armed: w.detector.Armed(),
-	}
-	w.change(func(snap *Snapshot) { snap.Live = &live })
-	if live.Stable == w.stable && w.at.Sub(w.shown) < showEvery {
+	stable := f.Kind == protocol.Weight && f.Stable
+	status := statusText(f)
+	if stable == w.stable && status == w.status && w.at.Sub(w.shown) < showEvery {
 		return
 	}
-	w.shown, w.stable = w.at, live.Stable
+	w.shown, w.stable, w.status = w.at, stable, status
+	live := Live{
+		Text: valueText(f), Unit: f.Unit, Stable: stable, Status: status, Raw: append([]byte(nil), f.Raw...),
+		At: w.wall().Add(-time.Since(w.at)), Progress: w.detector.Progress(), Armed: w.detector.Armed(),
+	}
+	if f.Kind == protocol.Weight && f.Plain && !f.InReport {
+		live.MassG = f.MassG()
+	}
+	w.change(func(snap *Snapshot) { snap.Live = &live })
 	w.sink.Live(w.cfg.Name, live)
 }
 

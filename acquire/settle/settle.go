@@ -182,7 +182,7 @@ func (d *Detector) interrupt(at time.Duration, kind Kind) {
 
 // ripe says whether the window is a whole dwell of a load at rest. An even drift needs
 // twice the dwell, to tell it from the long tail of a filter; so does a display that
-// flickers by more than a digit, because draught is slow and one dwell may lie on one
+// flickers by more than one digit up and down, because draught is slow and one dwell may lie on one
 // of its waves.
 func (d *Detector) ripe() bool {
 	w := &d.window
@@ -193,7 +193,7 @@ func (d *Detector) ripe() bool {
 	switch w.course(d.opt.DigitG) {
 	case level:
 		_, noise := w.line()
-		return long || noise <= d.opt.DigitG/2
+		return long || noise <= 0.75*d.opt.DigitG
 	case drifting:
 		return long
 	}
