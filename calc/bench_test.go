@@ -2,6 +2,7 @@ package calc
 
 import (
 	"context"
+	"fmt"
 	"math/rand/v2"
 	"runtime"
 	"sync"
@@ -15,19 +16,24 @@ import (
 // drawing as many normal deviates on as many processors. Budget: at most 4.
 func BenchmarkMonteCarlo(b *testing.B) {
 	bench := newBench(pattern{"stepwise", "separate", 6}, 1)
-	ds := bench.draw(bench.wander())
-	const trials = 1_000_000
-	deviates := countFacts(bench.in, ds) + commonInputs
-	b.Run("deliveries=30/trials=1000000", func(b *testing.B) {
-		besides := yardstick{b: b, bare: func() { bareDeviates(deviates * trials) }}
-		for b.Loop() {
-			if _, err := MonteCarlo(context.Background(), bench.in, bench.pointsML, ds, Simulation{Trials: trials, Seed: 1}); err != nil {
-				b.Fatal(err)
-			}
-			besides.measure()
+	for name, ambients := range map[string]int{"one": 1, "each": 30} { // how often the air was observed
+		ds := bench.draw(bench.wander())
+		for i := range ds {
+			ds[i].Ambient.PressureHPa += float64(i%ambients) / 10
 		}
-		besides.report()
-	})
+		const trials = 1_000_000
+		deviates := countFacts(bench.in, ds) + commonInputs
+		b.Run("deliveries=30/trials=1000000/ambient="+name, func(b *testing.B) {
+			besides := yardstick{b: b, bare: func() { bareDeviates(deviates * trials) }}
+			for b.Loop() {
+				if _, err := MonteCarlo(context.Background(), bench.in, bench.pointsML, ds, Simulation{Trials: trials, Seed: 1}); err != nil {
+					b.Fatal(err)
+				}
+				besides.measure()
+			}
+			besides.report()
+		})
+	}
 }
 
 func countFacts(in Inputs, ds []Delivery) int {
@@ -68,9 +74,19 @@ func bareDeviates(n int) {
 // Cholesky factorisation and solution of a matrix of that many deliveries. Budget: at
 // most 3.
 func BenchmarkFitCurve(b *testing.B) {
-	for _, p := range []pattern{{"stepwise", "separate", 10}, {"stepwise", "running", 10}, {"from-zero", "separate", 10}} {
-		b.Run("points=50/replicates=10/reading="+p.reading+"/weighing="+p.weighing, func(b *testing.B) {
+	for _, c := range []struct {
+		pattern
+		scatter float64
+	}{
+		{pattern{"stepwise", "separate", 10}, 1},
+		{pattern{"stepwise", "running", 10}, 1},
+		{pattern{"from-zero", "separate", 10}, 1},
+		{pattern{"stepwise", "separate", 10}, 3}, // solved twice, with the Birge ratio
+	} {
+		p := c.pattern
+		b.Run(fmt.Sprintf("points=50/replicates=10/reading=%s/weighing=%s/scatter=%g", p.reading, p.weighing, c.scatter), func(b *testing.B) {
 			bench := newBench(p, 1)
+			bench.scatter = c.scatter
 			bench.pointsML = nil
 			for k := 1; k <= 50; k++ {
 				bench.pointsML = append(bench.pointsML, float64(k))
@@ -85,6 +101,21 @@ func BenchmarkFitCurve(b *testing.B) {
 			}
 			besides.report()
 		})
+	}
+}
+
+// BenchmarkBetween is what one titration asks of the curve.
+func BenchmarkBetween(b *testing.B) {
+	bench := newBench(patterns[0], 1)
+	c, err := FitCurve(bench.in, bench.pointsML, bench.draw(bench.wander()))
+	if err != nil {
+		b.Fatal(err)
+	}
+	b.ReportAllocs()
+	for b.Loop() {
+		if _, err := c.Between(0.42, 24.79); err != nil {
+			b.Fatal(err)
+		}
 	}
 }
 

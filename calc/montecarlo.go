@@ -11,7 +11,7 @@ import (
 )
 
 // ValidationRule is how the first-order result is compared with the simulation.
-const ValidationRule = "JCGM 101:2008, 8.1: the ends of both 95.45 % intervals agree within half a unit of the second significant digit of the standard uncertainty."
+const ValidationRule = "JCGM 101:2008, 8.1: the ends of both coverage intervals, the symmetric one by simulation, agree within half a unit of the second significant digit of the standard uncertainty."
 
 // Agreement of the first-order result with the simulation.
 const (

@@ -97,19 +97,6 @@ func startBlocks(ctx context.Context, outputs int, newTrial func() Trial, s Simu
 		out    chan *block
 	}
 	orders, results := make(chan order), make(chan chan *block, 2*s.Workers)
-	go func() {
-		defer close(results)
-		defer close(orders)
-		for number := range uint64((total + blockTrials - 1) / blockTrials) {
-			o := order{number, make(chan *block, 1)}
-			select {
-			case results <- o.out:
-			case <-ctx.Done():
-				return
-			}
-			orders <- o
-		}
-	}()
 	var workers sync.WaitGroup
 	for range s.Workers {
 		workers.Go(func() {
@@ -123,6 +110,20 @@ func startBlocks(ctx context.Context, outputs int, newTrial func() Trial, s Simu
 			}
 		})
 	}
+	go func() { // ends when the results are taken or ctx is done; the last to close is results
+		defer close(results)
+		defer workers.Wait()
+		defer close(orders)
+		for number := range uint64((total + blockTrials - 1) / blockTrials) {
+			o := order{number, make(chan *block, 1)}
+			select {
+			case results <- o.out:
+			case <-ctx.Done():
+				return
+			}
+			orders <- o
+		}
+	}()
 	return results
 }
 

@@ -139,6 +139,14 @@ func TestVolumeWorkedExamples(t *testing.T) {
 	near(t, "table factor", 10.04/0.99793, "10.06")
 	// an evaluation by JJG 20-2001: 250.02 g × 1.002676 mL/g, recomputed
 	near(t, "250 mL measure", 250.02*1.002676, "250.68905")
+	// an evaluation of a 100 mL flask (Wang Hengbo et al.), the part that was readable
+	near(t, "100 mL flask, mass", 1.00285*0.00635, "0.00637")
+	near(t, "100 mL flask, factor", RectangularU(0.00004)*1e5, "2.31")
+	// an examination question: 99.7562 g ± 0.0033 g, buoyancy factor 1.001053, water
+	// 0.997906 ± 0.000111 g/mL; the answers are computed
+	flask := 99.7562 * 1.001053 / 0.997906
+	near(t, "100 mL flask by buoyancy factor", flask, "100.07079")
+	near(t, "its u", flask*math.Hypot(0.0033/99.7562, 0.000111/0.997906), "0.01161")
 }
 
 // Sensitivities at 20 °C, 1013.25 hPa, 50 % humidity, relative to the volume; computed with
