@@ -3,6 +3,7 @@ package main
 import (
 	"context"
 	"errors"
+	"os"
 	"sync"
 	"time"
 
@@ -123,48 +124,74 @@ func (o *outbox) publish(ctx context.Context, id string) error {
 	if err != nil {
 		return err
 	}
-	if prepared != nil && o.drop.Holds(prepared.Folder, prepared.Files) {
-		return o.d.desk.Published(ctx, id, prepared.PublishedBody)
+	if prepared != nil {
+		if files, there := o.drop.Holds(prepared.Folder, prepared.Files); there {
+			return o.d.desk.Published(ctx, id, session.PublishedBody{Folder: prepared.Folder, Files: files, Checkpoint: prepared.Checkpoint})
+		}
 	}
-	body, files, err := o.build(ctx, doc, curve)
+	return o.make(ctx, doc, curve)
+}
+
+// make builds the documents, binds them to the run by an event with their hashes, and
+// adds the evidence, which covers that event too.
+func (o *outbox) make(ctx context.Context, doc session.Document, curve *calc.Curve) error {
+	checkpoint, err := o.d.ledger.Checkpoint(ctx)
 	if err != nil {
 		return err
 	}
+	doc.Run.State, doc.Awaits, doc.Prompt, doc.Ledger.Checkpoint = session.Published, nil, "", string(checkpoint)
+	files, err := publish.Files(publish.Material{Document: doc, Curve: curve, Paper: o.d.config.Publish.Paper, Logo: o.logo(doc)})
+	if err != nil {
+		return err
+	}
+	id := doc.Run.ID
+	body := session.PublishedBody{Folder: o.d.folderName(id), Files: publish.Sums(files), Checkpoint: string(checkpoint)}
 	if err := o.d.desk.Prepared(ctx, id, body); err != nil {
 		return err
 	}
-	if _, err := o.drop.Put(body.Folder, files); err != nil {
+	evidence, err := o.evidence(ctx, id)
+	if err != nil {
+		return err
+	}
+	if body.Files, err = o.drop.Put(body.Folder, append(files, evidence...)); err != nil {
 		return err
 	}
 	return o.d.desk.Published(ctx, id, body)
 }
 
-// build makes the documents with the events' proofs against a fresh checkpoint.
-func (o *outbox) build(ctx context.Context, doc session.Document, curve *calc.Curve) (session.PublishedBody, []publish.File, error) {
-	lines, err := (record{o.d.ledger}).RunLines(ctx, doc.Run.ID)
+// logo reads the laboratory's picture, if there is one that can be read.
+func (o *outbox) logo(doc session.Document) []byte {
+	path := doc.Setting.Laboratory.Logo
+	if path == "" {
+		return nil
+	}
+	b, err := os.ReadFile(path)
 	if err != nil {
-		return session.PublishedBody{}, nil, err
+		o.d.log.Warn().Err(err).Msg("logo not read, certificate made without")
+	}
+	return b
+}
+
+// evidence gives the run's events with their proofs against a fresh checkpoint.
+func (o *outbox) evidence(ctx context.Context, id string) ([]publish.File, error) {
+	lines, err := (record{o.d.ledger}).RunLines(ctx, id)
+	if err != nil {
+		return nil, err
 	}
 	seqs := make([]int64, len(lines))
 	for i, line := range lines {
 		e, err := session.DecodeEvent(line)
 		if err != nil {
-			return session.PublishedBody{}, nil, err
+			return nil, err
 		}
 		seqs[i] = e.Seq
 	}
-	checkpoint, err := o.d.ledger.Checkpoint(ctx)
-	if err != nil {
-		return session.PublishedBody{}, nil, err
+	if _, err := o.d.ledger.Checkpoint(ctx); err != nil {
+		return nil, err
 	}
 	events, proof, err := o.d.ledger.RunProof(ctx, seqs)
 	if err != nil {
-		return session.PublishedBody{}, nil, err
+		return nil, err
 	}
-	doc.Run.State, doc.Awaits, doc.Prompt, doc.Ledger.Checkpoint = session.Published, nil, "", string(checkpoint)
-	files, err := publish.Files(publish.Material{Document: doc, Curve: curve, EventsJSONL: events, ProofJSON: proof, Paper: o.d.config.Publish.Paper})
-	if err != nil {
-		return session.PublishedBody{}, nil, err
-	}
-	return session.PublishedBody{Folder: o.d.folderName(doc.Run.ID), Files: publish.Sums(files), Checkpoint: string(checkpoint)}, files, nil
+	return publish.Evidence(events, proof), nil
 }

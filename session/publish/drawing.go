@@ -110,7 +110,7 @@ func (d *drawing) curve(m Material) error {
 		low = append(low, fmt.Sprintf("%.2f,%.2f", d.x(p.CorrectionML-p.ExpandedML), d.y(v)))
 		high = append([]string{fmt.Sprintf("%.2f,%.2f", d.x(p.CorrectionML+p.ExpandedML), d.y(v))}, high...)
 	}
-	d.put(`<polygon points="%s %s" fill="#2b6f8f" fill-opacity="0.18"/>`, strings.Join(low, " "), strings.Join(high, " "))
+	d.put(`<polygon points="%s %s" fill="#d3e4ec"/>`, strings.Join(low, " "), strings.Join(high, " "))
 	path := fmt.Sprintf("M%.2f %.2f", d.x(0), d.y(first))
 	for _, p := range m.Curve.Points {
 		path += fmt.Sprintf(" L%.2f %.2f", d.x(p.CorrectionML), d.y(p.ReadingML))
@@ -127,6 +127,6 @@ func (d *drawing) curve(m Material) error {
 func (d *drawing) legend() {
 	y := drawHeight - 12.0
 	d.put(`<g font-size="11"><circle cx="206" cy="%g" r="3.6" fill="#1d4f68"/><text x="216" y="%g">correction at a test point</text>`, y-4, y)
-	d.put(`<rect x="366" y="%g" width="16" height="9" fill="#2b6f8f" fill-opacity="0.18"/><text x="388" y="%g">expanded uncertainty U</text>`, y-9, y)
+	d.put(`<rect x="366" y="%g" width="16" height="9" fill="#d3e4ec"/><text x="388" y="%g">expanded uncertainty U</text>`, y-9, y)
 	d.put(`<path d="M522 %g h22" stroke="#8a3b12" stroke-dasharray="7 4"/><text x="550" y="%g">class limit</text></g>`, y-4, y)
 }

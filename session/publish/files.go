@@ -16,12 +16,10 @@ import (
 
 // Material is what the documents of a run are made from.
 type Material struct {
-	Document    session.Document
-	Curve       *calc.Curve
-	EventsJSONL []byte // the run's events as stored
-	ProofJSON   []byte // their inclusion proofs
-	Paper       string // A4 or Letter
-	Logo        []byte // PNG, may be empty
+	Document session.Document
+	Curve    *calc.Curve
+	Paper    string // A4 or Letter
+	Logo     []byte // PNG, may be empty
 }
 
 // document names a file and how it is made.
@@ -30,15 +28,15 @@ type document struct {
 	make func(Material) ([]byte, error)
 }
 
-// documents is every file of a run's folder but the list of hashes.
+// documents is every file of a run's folder but the list of hashes and the evidence,
+// which holds the event that names the hashes of these.
 var documents = []document{
 	{"run.json", runJSON},
 	{"deliveries.csv", deliveriesCSV},
 	{"curve.csv", curveCSV},
 	{"lookup.csv", lookupCSV},
 	{"curve.svg", curveSVG},
-	{"events.jsonl", func(m Material) ([]byte, error) { return m.EventsJSONL, nil }},
-	{"proof.json", func(m Material) ([]byte, error) { return m.ProofJSON, nil }},
+	{"certificate.pdf", certificatePDF},
 }
 
 // Files makes all documents of a run.
@@ -52,6 +50,12 @@ func Files(m Material) ([]File, error) {
 		files = append(files, File{d.name, b})
 	}
 	return files, nil
+}
+
+// Evidence gives the files that show where in the ledger the run stands: its events as
+// stored, and their proofs.
+func Evidence(eventsJSONL, proofJSON []byte) []File {
+	return []File{{"events.jsonl", eventsJSONL}, {"proof.json", proofJSON}}
 }
 
 func runJSON(m Material) ([]byte, error) {

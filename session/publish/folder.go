@@ -129,24 +129,33 @@ func (d Drop) same(final string, files []File) (bool, error) {
 	return true, nil
 }
 
-// Holds says whether the drop has the folder with exactly the files of these hashes:
-// what was prepared before an interruption has appeared after all.
-func (d Drop) Holds(name string, hashes map[string]string) bool {
-	entries, err := os.ReadDir(filepath.Join(d.Root, name))
-	if err != nil || len(entries) != len(hashes) {
-		return false
+// Holds says whether the drop has the folder, whole, with the files of these hashes in
+// it: what was prepared before an interruption has appeared after all. Files beyond
+// those must fit the folder's own list. It gives the hash of every file.
+func (d Drop) Holds(name string, hashes map[string]string) (map[string]string, bool) {
+	list, err := os.ReadFile(filepath.Join(d.Root, name, sumsName))
+	if err != nil {
+		return nil, false
+	}
+	found := map[string]string{sumsName: File{sumsName, list}.Sum()}
+	for _, line := range strings.Split(strings.TrimSpace(string(list)), "\n") {
+		want, file, _ := strings.Cut(line, "  ")
+		b, err := os.ReadFile(filepath.Join(d.Root, name, filepath.Base(file)))
+		if err != nil || (File{file, b}).Sum() != want {
+			return nil, false
+		}
+		found[file] = want
 	}
 	for file, want := range hashes {
-		b, err := os.ReadFile(filepath.Join(d.Root, name, file))
-		if err != nil || (File{file, b}).Sum() != want {
-			return false
+		if found[file] != want {
+			return nil, false
 		}
 	}
-	return true
+	return found, true
 }
 
-// Sums gives the hashes of the files that Put is going to write.
-func Sums(files []File) map[string]string { return sums(withSums(files)) }
+// Sums gives the hashes of files.
+func Sums(files []File) map[string]string { return sums(files) }
 
 // build writes the files into a new folder and makes them durable.
 func (d Drop) build(part string, files []File) error {
