@@ -348,3 +348,7 @@ func TestARunThroughTheDoor(t *testing.T) {
 
 // logTo writes a daemon's log into a test.
 func logTo(w io.Writer) zerolog.Logger { return zerolog.New(w) }
+
+func ifNoneMatch(tag string) func(*http.Request) {
+	return func(r *http.Request) { r.Header.Set("If-None-Match", tag) }
+}
