@@ -14,6 +14,7 @@ import (
 	"io"
 	"sync"
 	"sync/atomic"
+	"syscall"
 	"time"
 )
 
@@ -172,7 +173,7 @@ func (c *Conn) Read(p []byte) (int, error) {
 
 func (c *Conn) readError(err error) error {
 	switch {
-	case err == nil:
+	case err == nil, errors.Is(err, syscall.EAGAIN): // the library saw bytes that a flush took away
 		return nil
 	case c.closing.Load():
 		return io.ErrClosedPipe
