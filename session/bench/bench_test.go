@@ -153,6 +153,28 @@ func (c *clock) pass(d time.Duration) {
 
 var morning = time.Date(2026, 12, 1, 9, 0, 0, 0, time.UTC)
 
+// quietBench is a bench with a desk and no server, for tests in a bubble.
+func quietBench(t *testing.T) *Bench {
+	t.Helper()
+	record := &memory{}
+	d, err := desk.New(t.Context(), record, &clock{at: morning}, zerolog.Nop())
+	if err != nil {
+		t.Fatal(err)
+	}
+	ctx, cancel := context.WithCancel(context.Background())
+	stopped := make(chan error, 1)
+	go func() { stopped <- d.Run(ctx) }()
+	t.Cleanup(func() { cancel(); <-stopped })
+	b, err := New(Options{
+		Desk: d, Stations: &restless{}, Records: record, Version: "test", Log: zerolog.Nop(),
+		Setting: func(string) session.Setting { return session.Setting{Inputs: calc.DefaultInputs()} },
+	})
+	if err != nil {
+		t.Fatal(err)
+	}
+	return b
+}
+
 func open(t *testing.T, change func(*Options)) *laboratory {
 	t.Helper()
 	l := &laboratory{t: t, record: &memory{}, now: &clock{at: morning}, operator: "a.lindqvist", pans: &pans{list: []Station{
