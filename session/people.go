@@ -19,12 +19,16 @@ type Duty string
 
 // The duties.
 const (
-	Operates     Duty = "operator"
-	Reviews      Duty = "reviewer"
-	Administers  Duty = "administrator"
-	lockAfter         = 5                // wrong secrets in a row
-	lockedFor         = 15 * time.Minute // unless an administrator unlocks earlier
-	longestPrint      = 80               // bytes of a printed name
+	Operates    Duty = "operator"
+	Reviews     Duty = "reviewer"
+	Administers Duty = "administrator"
+)
+
+// When a name is locked, and how long a printed name may be.
+const (
+	lockAfter    = 5                // wrong secrets in a row
+	lockedFor    = 15 * time.Minute // unless an administrator unlocks earlier
+	longestPrint = 80               // bytes
 )
 
 // Action is something that a call may do and that needs a duty.

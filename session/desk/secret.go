@@ -30,21 +30,21 @@ import (
 // belongs into every backup; without it nobody can sign in until new secrets are set.
 type Secrets struct {
 	path string
-	cost cost
+	cost Cost
 	mu   sync.Mutex // guards hashes and the file; held while the file is written
 	busy chan struct{}
 
 	hashes map[string]string
 }
 
-// cost is what one check costs. The daemon uses RFC 9106, section 4, second recommended
-// option: 64 MiB, 3 passes, 4 lanes.
-type cost struct {
-	passes, memoryKiB uint32
-	lanes             uint8
+// Cost is what one check of a secret costs.
+type Cost struct {
+	Passes, MemoryKiB uint32
+	Lanes             uint8
 }
 
-var defaultCost = cost{passes: 3, memoryKiB: 64 << 10, lanes: 4}
+// FullCost is RFC 9106, section 4, second recommended option: 64 MiB, 3 passes, 4 lanes.
+var FullCost = Cost{Passes: 3, MemoryKiB: 64 << 10, Lanes: 4}
 
 const (
 	saltBytes, hashBytes = 16, 32
@@ -52,9 +52,10 @@ const (
 	ShortestSecret, LongestSecret = 8, 256
 )
 
-// OpenSecrets reads the file; one that is not there yet is empty.
-func OpenSecrets(path string) (*Secrets, error) {
-	s := &Secrets{path: path, cost: defaultCost, busy: make(chan struct{}, 1), hashes: map[string]string{}}
+// OpenSecrets reads the file; one that is not there yet is empty. New secrets are hashed
+// at the given cost, FullCost anywhere but in tests.
+func OpenSecrets(path string, cost Cost) (*Secrets, error) {
+	s := &Secrets{path: path, cost: cost, busy: make(chan struct{}, 1), hashes: map[string]string{}}
 	text, err := os.ReadFile(path)
 	if errors.Is(err, fs.ErrNotExist) {
 		return s, nil
@@ -117,18 +118,18 @@ func bind(hash string) string {
 }
 
 // encode hashes one secret at a time, so that sign-in cannot be used to fill the memory.
-func (s *Secrets) encode(secret string, salt []byte, c cost) string {
+func (s *Secrets) encode(secret string, salt []byte, c Cost) string {
 	s.busy <- struct{}{}
 	defer func() { <-s.busy }()
-	key := argon2.IDKey([]byte(secret), salt, c.passes, c.memoryKiB, c.lanes, hashBytes)
+	key := argon2.IDKey([]byte(secret), salt, c.Passes, c.MemoryKiB, c.Lanes, hashBytes)
 	b64 := base64.RawStdEncoding
-	return fmt.Sprintf("$argon2id$v=%d$m=%d,t=%d,p=%d$%s$%s", argon2.Version, c.memoryKiB, c.passes, c.lanes, b64.EncodeToString(salt), b64.EncodeToString(key))
+	return fmt.Sprintf("$argon2id$v=%d$m=%d,t=%d,p=%d$%s$%s", argon2.Version, c.MemoryKiB, c.Passes, c.Lanes, b64.EncodeToString(salt), b64.EncodeToString(key))
 }
 
-func decode(hash string) (salt []byte, c cost, err error) {
+func decode(hash string) (salt []byte, c Cost, err error) {
 	var version int
 	var rest string
-	if _, err = fmt.Sscanf(hash, "$argon2id$v=%d$m=%d,t=%d,p=%d$%s", &version, &c.memoryKiB, &c.passes, &c.lanes, &rest); err != nil {
+	if _, err = fmt.Sscanf(hash, "$argon2id$v=%d$m=%d,t=%d,p=%d$%s", &version, &c.MemoryKiB, &c.Passes, &c.Lanes, &rest); err != nil {
 		return nil, c, fmt.Errorf("stored hash: %w", err)
 	}
 	if version != argon2.Version || len(rest) < base64.RawStdEncoding.EncodedLen(saltBytes) {
