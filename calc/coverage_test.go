@@ -27,9 +27,13 @@ func (c *coverage) add(o coverage) {
 // five readings between them, and for five titrations between readings drawn at
 // random, each read with the reading uncertainty.
 func simulate(t *testing.T, p pattern, rate, scatter float64, seed uint64, runs int) coverage {
-	var out coverage
 	b := newBench(p, seed)
 	b.rate, b.scatter = rate, scatter
+	return b.count(t, runs)
+}
+
+func (b *bench) count(t *testing.T, runs int) coverage {
+	var out coverage
 	for range runs {
 		h := b.wander()
 		c, err := FitCurve(b.in, b.pointsML, b.draw(h))
@@ -45,7 +49,11 @@ func simulate(t *testing.T, p pattern, rate, scatter float64, seed uint64, runs 
 			out.points += holds(point, h.at(point.ReadingML), 0)
 		}
 		for k := range b.pointsML {
-			r := 10 * (float64(k) + 0.1 + 0.8*b.rng.Float64())
+			left := 0.0
+			if k > 0 {
+				left = b.pointsML[k-1]
+			}
+			r := left + (b.pointsML[k]-left)*(0.1+0.8*b.rng.Float64())
 			out.between += holds(at(t, c, 0, r), h.at(r), 0)
 			out.titrations += titration(t, b, c, h)
 		}
@@ -115,6 +123,25 @@ func TestCoverage(t *testing.T) {
 	}
 	checkCoverage(t, "all", all)
 	t.Log("\n" + table.String())
+}
+
+// Points at unequal distances: the noise of short intervals must not swamp the bridge.
+func TestCoverageOfUnequalPoints(t *testing.T) {
+	runs := 300
+	if *coverageLong {
+		runs = 10_000
+	}
+	for _, points := range [][]float64{{1, 2, 5, 10, 25, 50}, {5, 10, 20, 30, 50}, {2, 4, 6, 8, 10, 50}} {
+		b := newBench(pattern{"stepwise", "separate", 2}, 4)
+		b.pointsML = points
+		got := b.count(t, runs)
+		n := float64(got.runs * len(points))
+		at, between, titrations := float64(got.points)/n, float64(got.between)/n, float64(got.titrations)/n
+		t.Logf("%v: %.2f%% at the points, %.2f%% between, %.2f%% titrations", points, 100*at, 100*between, 100*titrations)
+		if at < 0.935 || at > 0.975 || between < 0.94 || titrations < 0.945 || titrations > 0.985 {
+			t.Errorf("%v: %.4f, %.4f, %.4f", points, at, between, titrations)
+		}
+	}
 }
 
 // Where readings and deliveries scatter more than the inputs state, the Birge ratio
