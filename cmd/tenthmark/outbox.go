@@ -7,7 +7,6 @@ import (
 	"sync"
 	"time"
 
-	"tenthmark/calc"
 	"tenthmark/session"
 	"tenthmark/session/bench"
 	"tenthmark/session/desk"
@@ -112,13 +111,14 @@ func (o documents) Waiting() []bench.Waiting {
 // publish builds a run's documents, records that they are about to appear, puts them
 // into the drop and records that. After an interruption it finds out what had appeared.
 func (o *outbox) publish(ctx context.Context, id string) error {
-	var doc session.Document
-	var curve *calc.Curve
+	var m publish.Material
 	var prepared *session.Publication
 	err := o.d.desk.ViewRun(ctx, id, func(r *session.Run) (err error) {
 		prepared = r.Prepared
-		doc = r.Document()
-		curve, err = r.Curve()
+		m.Document = r.Document()
+		if m.Deliveries, err = r.CalcDeliveries(); err == nil {
+			m.Curve, err = r.Curve()
+		}
 		return err
 	})
 	if err != nil {
@@ -129,18 +129,20 @@ func (o *outbox) publish(ctx context.Context, id string) error {
 			return o.d.desk.Published(ctx, id, session.PublishedBody{Folder: prepared.Folder, Files: files, Checkpoint: prepared.Checkpoint})
 		}
 	}
-	return o.make(ctx, doc, curve)
+	return o.make(ctx, m)
 }
 
 // make builds the documents, binds them to the run by an event with their hashes, and
 // adds the evidence, which covers that event too.
-func (o *outbox) make(ctx context.Context, doc session.Document, curve *calc.Curve) error {
+func (o *outbox) make(ctx context.Context, m publish.Material) error {
 	checkpoint, err := o.d.ledger.Checkpoint(ctx)
 	if err != nil {
 		return err
 	}
+	doc := &m.Document
 	doc.Run.State, doc.Awaits, doc.Prompt, doc.Ledger.Checkpoint = session.Published, nil, "", string(checkpoint)
-	files, err := publish.Files(publish.Material{Document: doc, Curve: curve, Paper: o.d.config.Publish.Paper, Logo: o.logo(doc)})
+	m.Paper, m.Logo = o.d.config.Publish.Paper, o.logo(*doc)
+	files, err := publish.Files(m)
 	if err != nil {
 		return err
 	}

@@ -16,10 +16,11 @@ import (
 
 // Material is what the documents of a run are made from.
 type Material struct {
-	Document session.Document
-	Curve    *calc.Curve
-	Paper    string // A4 or Letter
-	Logo     []byte // PNG, may be empty
+	Document   session.Document
+	Curve      *calc.Curve
+	Deliveries []calc.Delivery // those that entered the curve
+	Paper      string          // A4 or Letter
+	Logo       []byte          // PNG, may be empty
 }
 
 // document names a file and how it is made.
@@ -37,6 +38,9 @@ var documents = []document{
 	{"lookup.csv", lookupCSV},
 	{"curve.svg", curveSVG},
 	{"certificate.pdf", certificatePDF},
+	{"certificate.html", certificateHTML},
+	{"certificate.xml", certificateXML},
+	{"worksheet.txt", worksheetText},
 }
 
 // Files makes all documents of a run.
@@ -64,4 +68,13 @@ func runJSON(m Material) ([]byte, error) {
 		return nil, err
 	}
 	return append(b, '\n'), nil
+}
+
+// worksheetText is the hand calculation, for a reviewer with a pocket calculator.
+func worksheetText(m Material) ([]byte, error) {
+	sheet, err := calc.NewWorksheet(m.Document.Inputs, m.Curve, m.Deliveries)
+	if err != nil {
+		return nil, err
+	}
+	return []byte(sheet.Text()), nil
 }
