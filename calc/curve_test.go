@@ -403,6 +403,7 @@ func TestFitRefuses(t *testing.T) {
 		}, ErrUndetermined, "30 mL"},
 		{"inputs", b.pointsML, func(in *Inputs, ds []Delivery) []Delivery { in.UReadingML = -1; return ds }, nil, "u_reading_mL"},
 		{"water", b.pointsML, func(_ *Inputs, ds []Delivery) []Delivery { ds[3].Water.WaterTempC = 41; return ds }, ErrOutsideRange, "delivery 4"},
+		{"negative uncertainty", b.pointsML, func(_ *Inputs, ds []Delivery) []Delivery { ds[4].End.UReadingML = -0.01; return ds }, nil, "delivery 5"},
 		{"numbered twice", b.pointsML, func(_ *Inputs, ds []Delivery) []Delivery { ds[3].Delivery = 1; return ds }, nil, "twice"},
 		{"reading not a number", b.pointsML, func(_ *Inputs, ds []Delivery) []Delivery { ds[0].Start.ReadingML = math.NaN(); return ds }, nil, "delivery 1"},
 	} {
@@ -478,4 +479,40 @@ func TestInputsCheck(t *testing.T) {
 			t.Errorf("%s: %v", key, err)
 		}
 	}
+}
+
+// Whatever stands in a fact, the answer is an error or finite.
+func TestFitNeverGivesNaN(t *testing.T) {
+	rapid.Check(t, func(t *rapid.T) {
+		b := newBench(rapid.SampledFrom(patterns).Draw(t, "pattern"), rapid.Uint64().Draw(t, "seed"))
+		ds := b.draw(b.wander())
+		d := &ds[rapid.IntRange(0, len(ds)-1).Draw(t, "delivery")]
+		field := rapid.SampledFrom([]*float64{
+			&d.Before.MassG, &d.After.MassG, &d.After.UMassG, &d.Start.ReadingML, &d.End.ReadingML, &d.End.UReadingML, &d.Water.WaterTempC,
+			&d.Water.UWaterTempC, &d.Ambient.AirTempC, &d.Ambient.PressureHPa, &d.Ambient.HumidityPct, &d.EvaporationG,
+		}).Draw(t, "field")
+		*field = rapid.SampledFrom([]float64{0, -1, 1e-300, 1e9, 1e300, math.MaxFloat64, math.NaN(), math.Inf(1), math.Inf(-1)}).Draw(t, "value")
+		c, err := FitCurve(b.in, b.pointsML, ds)
+		if err != nil {
+			return
+		}
+		for _, p := range append(slices.Clone(c.Points), at2(c, 17.3)) {
+			for _, x := range []float64{p.CorrectionML, p.UML, p.K, p.ExpandedML, c.Chi2, c.Birge, c.BridgeRateML2PerML} {
+				if math.IsNaN(x) || math.IsInf(x, 0) {
+					t.Fatalf("%+v", p)
+				}
+			}
+			if math.IsNaN(float64(p.NuEff)) {
+				t.Fatalf("%+v", p)
+			}
+		}
+		if _, err := json.Marshal(c); err != nil {
+			t.Fatal(err)
+		}
+	})
+}
+
+func at2(c *Curve, readingML float64) Point {
+	p, _ := c.At(readingML)
+	return p
 }

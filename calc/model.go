@@ -2,6 +2,7 @@ package calc
 
 import (
 	"fmt"
+	"math"
 )
 
 // factKind is a kind of fact; every fact of it is one independent variable.
@@ -86,6 +87,11 @@ func square(rows, columns int) [][]float64 {
 
 // addDelivery fills row i.
 func (m *model) addDelivery(i int, d Delivery) error {
+	for _, u := range [5]float64{d.Before.UMassG, d.After.UMassG, d.Start.UReadingML, d.End.UReadingML, d.Water.UWaterTempC} {
+		if !(u >= 0) || math.IsInf(u, 1) {
+			return fmt.Errorf("delivery %d: a fact has the uncertainty %g", d.Delivery, u)
+		}
+	}
 	v, slope, err := deliver(m.in, d)
 	if err != nil {
 		return err
