@@ -9,15 +9,20 @@ import (
 
 	"tenthmark/session"
 	"tenthmark/session/bench"
+	"tenthmark/session/desk"
 )
 
 // furnish makes the outbox and the page of a daemon that has ledger, desk and stations.
 func (d *daemon) furnish(zone *time.Location) error {
 	d.outbox = newOutbox(d)
+	secrets, err := desk.OpenSecrets(d.config.secretsFile(), desk.FullCost)
+	if err != nil {
+		return err
+	}
 	b, err := bench.New(bench.Options{
 		Desk: d.desk, Stations: d.stations, Records: records{d.ledger}, Documents: documents{d},
 		Backup:  func(ctx context.Context, file string) (any, error) { return d.ledger.Backup(ctx, file) },
-		Setting: d.config.setting, SignIn: d.config.Access.SignIn,
+		Setting: d.config.setting, SignIn: d.config.Access.SignIn, Secrets: secrets,
 		TLS: d.config.Bench.TLSCert != "", Zone: zone, Version: version(), Log: d.log,
 	})
 	if err != nil {

@@ -1,6 +1,7 @@
 package main
 
 import (
+	"cmp"
 	"context"
 	"encoding/json"
 	"fmt"
@@ -9,12 +10,15 @@ import (
 	"time"
 
 	"tenthmark/session"
+	"tenthmark/session/desk"
 	"tenthmark/session/ledger"
 )
 
 func runInit(ctx context.Context, args []string, io stdio) int {
 	f := newFlags("init", "Makes the ledger and its signing key, once. Nothing is overwritten.", io.err)
 	file := f.String("c", "config.toml", "configuration `file`")
+	administrator := f.String("administrator", "", "`name` of the first administrator, whose secret is asked for (where people sign in)")
+	printed := f.String("printed", "", "the administrator's `name` as it is printed; default: the same")
 	if code, done := parse(f, args); done {
 		return code
 	}
@@ -22,8 +26,23 @@ func runInit(ctx context.Context, args []string, io stdio) int {
 	if err != nil {
 		return complain(io.err, err)
 	}
+	secret := ""
+	if *administrator != "" {
+		if secret, err = askSecret(io.in, io.err, *administrator); err != nil {
+			return complain(io.err, err)
+		}
+		if err := desk.CheckSecret(secret); err != nil {
+			return complain(io.err, err)
+		}
+	}
 	if err := createLedger(ctx, c, time.Now()); err != nil {
 		return complain(io.err, err)
+	}
+	if *administrator != "" {
+		p := session.Person{Name: *administrator, PrintedName: cmp.Or(*printed, *administrator)}
+		if err := enrolAdministrator(ctx, c, p, secret); err != nil {
+			return complain(io.err, err)
+		}
 	}
 	fmt.Fprintf(io.out, "The ledger is %s, its signing key %s and the public key %s.pub.\n", c.Ledger.Path, c.Ledger.Key, c.Ledger.Key)
 	fmt.Fprintln(io.out, "Keep the public key and, from time to time, a checkpoint on another computer; back the signing key up apart from the ledger.")

@@ -69,11 +69,19 @@ func OpenSecrets(path string, cost Cost) (*Secrets, error) {
 	return s, nil
 }
 
+// CheckSecret says whether a secret can be one.
+func CheckSecret(secret string) error {
+	if len(secret) < ShortestSecret || len(secret) > LongestSecret {
+		return session.Refuse("bad-secret", fmt.Sprintf("A secret has %d to %d bytes.", ShortestSecret, LongestSecret), "Several words in a row are easy to remember and hard to guess.")
+	}
+	return nil
+}
+
 // Keep hashes a secret, stores the hash durably and gives the SHA-256 that an event
 // binds it by.
 func (s *Secrets) Keep(secret string) (binding string, err error) {
-	if len(secret) < ShortestSecret || len(secret) > LongestSecret {
-		return "", session.Refuse("bad-secret", fmt.Sprintf("A secret has %d to %d bytes.", ShortestSecret, LongestSecret), "Several words in a row are easy to remember and hard to guess.")
+	if err := CheckSecret(secret); err != nil {
+		return "", err
 	}
 	salt := make([]byte, saltBytes)
 	_, _ = rand.Read(salt) // never fails: crypto/rand ends the program instead
