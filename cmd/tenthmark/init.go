@@ -26,8 +26,11 @@ func runInit(ctx context.Context, args []string, io stdio) int {
 	if err != nil {
 		return complain(io.err, err)
 	}
-	secret := ""
+	secret, person := "", session.Person{Name: *administrator, PrintedName: cmp.Or(*printed, *administrator)}
 	if *administrator != "" {
+		if _, err := session.NewBook().EnrolFirst(person); err != nil {
+			return complain(io.err, err)
+		}
 		if secret, err = askSecret(io.in, io.err, *administrator); err != nil {
 			return complain(io.err, err)
 		}
@@ -39,8 +42,7 @@ func runInit(ctx context.Context, args []string, io stdio) int {
 		return complain(io.err, err)
 	}
 	if *administrator != "" {
-		p := session.Person{Name: *administrator, PrintedName: cmp.Or(*printed, *administrator)}
-		if err := enrolAdministrator(ctx, c, p, secret); err != nil {
+		if err := enrolAdministrator(ctx, c, person, secret); err != nil {
 			return complain(io.err, err)
 		}
 	}
