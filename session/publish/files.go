@@ -41,6 +41,7 @@ var documents = []document{
 	{"certificate.html", certificateHTML},
 	{"certificate.xml", certificateXML},
 	{"worksheet.txt", worksheetText},
+	{"uncertainty.txt", uncertaintyText},
 }
 
 // Files makes all documents of a run.
