@@ -42,14 +42,15 @@ func (f *Frame) columns(body []byte) bool {
 	if n == 0 {
 		return false
 	}
+	f.Sign = sign
+	if sign == ' ' {
+		f.Sign = 0
+	}
 	unit, ok := unitColumns(body, i+n)
 	if !ok || sign == ' ' && len(unit) == 0 && len(body) < bodyLength {
 		return false
 	}
 	f.Kind = Weight
-	if sign != ' ' {
-		f.Sign = sign
-	}
 	f.setUnit(unit)
 	return true
 }

@@ -1,6 +1,11 @@
 package protocol
 
-import "tenthmark/calc/decimal"
+import (
+	"bytes"
+	"encoding/binary"
+
+	"tenthmark/calc/decimal"
+)
 
 // Options of a decoder. The zero value suits an SBI-style line.
 type Options struct {
@@ -35,7 +40,6 @@ type Decoder struct {
 	parity  parityWatch
 	report  report
 	traffic Traffic
-	digits  [decimal.MaxDigits + 1]byte
 	frame   Frame
 }
 
@@ -45,7 +49,9 @@ func NewDecoder(opt Options) *Decoder {
 	if opt.MaxLine == 0 {
 		opt.MaxLine = usualMaxLine
 	}
-	return &Decoder{opt: opt, raw: make([]byte, 0, opt.MaxLine+2), line: make([]byte, 0, opt.MaxLine)}
+	d := &Decoder{opt: opt, raw: make([]byte, 0, opt.MaxLine+2), line: make([]byte, 0, opt.MaxLine)}
+	d.frame.store = make([]byte, 0, decimal.MaxDigits+2)
+	return d
 }
 
 // Resync makes the decoder drop everything up to the next terminator: after opening,
@@ -71,6 +77,10 @@ func (d *Decoder) start() {
 // until it returns.
 func (d *Decoder) Feed(chunk []byte, emit func(*Frame)) {
 	for len(chunk) > 0 {
+		if n := d.takeLine(chunk, emit); n > 0 {
+			chunk = chunk[n:]
+			continue
+		}
 		if n := d.takeText(chunk, emit); n > 0 {
 			chunk = chunk[n:]
 			continue
@@ -78,6 +88,72 @@ func (d *Decoder) Feed(chunk []byte, emit func(*Frame)) {
 		d.takeControl(chunk[0], emit)
 		chunk = chunk[1:]
 	}
+}
+
+// takeLine is the short way for what nearly always comes: a whole line of printable
+// seven-bit characters that ends with CR LF. It gives the line's length, 0 when the
+// long way is needed; the frames are the same.
+func (d *Decoder) takeLine(chunk []byte, emit func(*Frame)) int {
+	if len(d.raw) > 0 || d.skipping {
+		return 0
+	}
+	n := lineFeed(chunk, d.opt.MaxLine+2)
+	if n < 8 || n > d.opt.MaxLine+1 || chunk[n-1] != '\r' {
+		return 0
+	}
+	f, line := &d.frame, chunk[:n-1]
+	usual := d.opt.Pattern == nil && f.usual(line)
+	if !usual && !isPrintable(line) {
+		return 0
+	}
+	d.untold, d.bareLF = false, false
+	d.traffic.Bytes += n + 1
+	if d.parity.is != NoParity {
+		d.parity.line(tally{})
+	}
+	f.begin(chunk[:n+1], line)
+	if usual {
+		f.Kind = Weight
+	} else {
+		d.read(f)
+	}
+	d.place(f)
+	emit(f)
+	d.traffic.fade()
+	return n + 1
+}
+
+// lineFeed finds the first LF, looking first where the usual lines have it: what comes
+// before it is looked at anyway.
+func lineFeed(chunk []byte, most int) int {
+	const long, short = idLength + bodyLength + 1, bodyLength + 1
+	if len(chunk) > long && chunk[long] == '\n' {
+		return long
+	}
+	if len(chunk) > short && chunk[short] == '\n' {
+		return short
+	}
+	return bytes.IndexByte(chunk[:min(len(chunk), most)], '\n')
+}
+
+// isPrintable says whether all bytes, seven or more of them, are 0x20 to 0x7E. It
+// looks at eight at a time.
+func isPrintable(s []byte) bool {
+	if len(s) < 8 {
+		return false
+	}
+	bad := uint64(0)
+	for i := 0; i+8 <= len(s); i += 8 {
+		bad |= notPrintable(binary.LittleEndian.Uint64(s[i:]))
+	}
+	return bad|notPrintable(binary.LittleEndian.Uint64(s[len(s)-8:])) == 0
+}
+
+// notPrintable is zero when all eight bytes are 0x20 to 0x7E: adding one carries 0x7F
+// into bit 7, and taking 0x20 away borrows there from what is less.
+func notPrintable(x uint64) uint64 {
+	const ones = 0x0101010101010101
+	return (x | (x + ones) | (x - 0x20*ones)) & (0x80 * ones)
 }
 
 // takeText takes the printable bytes at the beginning of chunk and gives their count.
@@ -160,7 +236,6 @@ func (d *Decoder) count(n, high, odd int) {
 	d.tally.odd += odd
 	d.traffic.Bytes += n
 	d.traffic.High += high
-	d.traffic.Odd += odd
 }
 
 // keep stores bytes as they came, as many as an endless line may have.
@@ -195,8 +270,10 @@ func (d *Decoder) finish(emit func(*Frame), byLF bool) {
 	}
 	d.bareLF = byLF && !byCR
 	if !d.skipping {
-		d.understand()
+		d.frameLine()
 		emit(&d.frame)
+	} else {
+		d.traffic.mark(d.tally)
 	}
 	d.skipping = false
 	d.start()
@@ -215,7 +292,7 @@ func (d *Decoder) Gap(emit func(*Frame)) {
 	case len(d.line) == 0 && d.damage == NoDamage || d.skipping:
 	default:
 		d.damage = Unterminated
-		d.understand()
+		d.frameLine()
 		emit(&d.frame)
 		d.start()
 		d.skipping = true
@@ -225,24 +302,41 @@ func (d *Decoder) Gap(emit func(*Frame)) {
 // End is Gap for a line that is over: nothing more will come.
 func (d *Decoder) End(emit func(*Frame)) { d.Gap(emit) }
 
-// understand fills the frame from the line.
-func (d *Decoder) understand() {
-	f := &d.frame
-	*f = Frame{Raw: d.raw, Dropped: d.dropped, line: d.line, digits: d.digits[:0]}
-	d.traffic.Frames++
+// frameLine fills the frame from the line that was gathered.
+func (d *Decoder) frameLine() {
 	if d.damage == NoDamage && !d.parity.line(d.tally) {
 		d.damage = WrongParity
 	}
+	d.traffic.mark(d.tally)
+	d.frame.begin(d.raw, d.line)
+	d.frame.Dropped, d.frame.Damage = d.dropped, d.damage
+	d.read(&d.frame)
+	d.place(&d.frame)
+}
+
+// read says what a line is by itself.
+func (d *Decoder) read(f *Frame) {
 	switch {
-	case d.damage != NoDamage:
-		f.Damage = d.damage
+	case f.Damage != NoDamage:
+		f.noNumber()
 	case d.opt.Pattern != nil:
 		d.opt.Pattern.parse(f)
 	default:
 		parse(f)
 	}
-	d.report.watch(f)
-	d.reply(f)
+}
+
+// place says what a line is where it stands: in a report, after a question.
+func (d *Decoder) place(f *Frame) {
+	if r := &d.report; f.Kind == Weight && !r.inside && !r.dashes {
+		r.twoBefore, r.before = r.before, Weight
+	} else {
+		r.watch(f)
+	}
+	if d.expected > 0 {
+		d.reply(f)
+	}
+	d.traffic.Frames++
 	if f.Kind != Text && f.Kind != Damaged {
 		d.traffic.Read++
 	}
@@ -250,7 +344,7 @@ func (d *Decoder) understand() {
 
 // reply marks the answer to a question.
 func (d *Decoder) reply(f *Frame) {
-	if d.expected == 0 || f.InReport {
+	if f.InReport {
 		return
 	}
 	bare := f.Kind == Weight && f.Sign == 0 && f.Unit == ""

@@ -51,8 +51,8 @@ var damageNames = [...]string{"", "nul byte", "too long", "unterminated", "unrea
 
 func (d Damage) String() string { return damageNames[d] }
 
-// Frame is one line as it was understood. It and its Raw are valid until the decoder
-// is fed again; what is to be kept must be copied.
+// Frame is one line as it was understood. It and its Raw are valid until emit returns;
+// what is to be kept must be copied.
 type Frame struct {
 	Kind             Kind
 	Raw              []byte // the bytes exactly as they came, with terminator and bit 7
@@ -69,10 +69,25 @@ type Frame struct {
 	Code             string // of an Error
 	Damage           Damage
 
-	line     []byte // the line without terminator, bit 7 and flow control
-	digits   []byte // the number as sent, without sign and brackets, with a point
-	unscaled int64  // the digits as an integer, without sign
-	decimals int    // digits after the decimal mark
+	line   []byte // the line without terminator, bit 7 and flow control
+	digits []byte // the number as sent, without sign and brackets, with a point
+	store  []byte // room for digits that cannot stay where they are in line
+}
+
+// begin empties the frame for another line, all but the number, which whoever reads
+// the line sets or takes back. Field by field is several times as fast here as one
+// assignment of the whole.
+func (f *Frame) begin(raw, line []byte) {
+	f.Kind, f.Raw, f.Dropped, f.InReport, f.Reply = Damaged, raw, 0, false, false
+	f.Condition, f.Damage, f.line = NoCondition, NoDamage, line
+	if f.Code != "" {
+		f.Code = ""
+	}
+}
+
+// noNumber takes back what was read of a number that turned out to be none.
+func (f *Frame) noNumber() {
+	f.ID, f.Unit, f.Sign, f.Stable, f.Plain, f.UnverifiedDigits, f.digits = "", "", 0, false, false, 0, nil
 }
 
 // Text gives the digits as sent, without sign and brackets and with a decimal point:
@@ -98,15 +113,6 @@ func (f *Frame) Value() decimal.Number {
 		return decimal.Number{}
 	}
 	return n
-}
-
-// Scaled gives the number as an integer and its count of decimals: the value is
-// unscaled × 10^-decimals in the frame's unit. It allocates nothing.
-func (f *Frame) Scaled() (unscaled int64, decimals int) {
-	if f.Sign == '-' {
-		return -f.unscaled, f.decimals
-	}
-	return f.unscaled, f.decimals
 }
 
 // MassG gives the number in grams, shifting the decimal mark and no more. It is absent

@@ -7,6 +7,10 @@ import "bytes"
 // shows instead of a number.
 func parse(f *Frame) {
 	line := f.line
+	f.noNumber()
+	if isStatus(line) && f.parseSpecial(line) {
+		return
+	}
 	if f.parseWeight(line) {
 		f.Plain = f.Kind == Weight && isPlainID(f.ID) && isGrams(f.Unit)
 		return
@@ -15,11 +19,19 @@ func parse(f *Frame) {
 	f.parseSpecial(line)
 }
 
-// parseSpecial understands lines that hold no weight.
-func (f *Frame) parseSpecial(line []byte) {
+const statusCode = "Stat"
+
+// isStatus: the line has the code of a status.
+func isStatus(line []byte) bool {
+	return len(line) >= len(statusCode) && string(line[:len(statusCode)]) == statusCode &&
+		(len(line) == len(statusCode) || line[len(statusCode)] == ' ')
+}
+
+// parseSpecial understands lines that hold no weight; false says that it is but text.
+func (f *Frame) parseSpecial(line []byte) bool {
 	line = bytes.TrimSpace(line)
-	if rest, found := bytes.CutPrefix(line, []byte("Stat")); found && (len(rest) == 0 || rest[0] == ' ') {
-		line = bytes.TrimLeft(rest, " ")
+	if isStatus(line) {
+		line = bytes.TrimLeft(line[len(statusCode):], " ")
 	}
 	switch {
 	case len(line) == 0:
@@ -27,15 +39,17 @@ func (f *Frame) parseSpecial(line []byte) {
 	case f.parseCondition(line), f.parseError(line):
 	default:
 		f.Kind = Text
+		return false
 	}
+	return true
 }
 
 func (f *Frame) parseWeight(line []byte) bool {
 	if len(line) <= bodyLength && f.columns(line) {
 		return true
 	}
-	if id := line[:min(idLength, len(line))]; len(line) > idLength && f.columns(line[idLength:]) {
-		if isIdentification(id) {
+	if len(line) > idLength && f.columns(line[idLength:]) {
+		if id := line[:idLength]; isIdentification(id) {
 			f.ID = intern(bytes.Trim(id, " "))
 			return true
 		}
@@ -46,12 +60,6 @@ func (f *Frame) parseWeight(line []byte) bool {
 		return true
 	}
 	return f.words(line) || f.loosely(line)
-}
-
-// noNumber takes back what was read of a number that turned out to be none.
-func (f *Frame) noNumber() {
-	f.ID, f.Unit, f.Sign, f.Stable, f.UnverifiedDigits = "", "", 0, false, 0
-	f.digits, f.unscaled, f.decimals = f.digits[:0], 0, 0
 }
 
 func isGrams(unit string) bool {

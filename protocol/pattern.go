@@ -130,6 +130,7 @@ func severalRunes(ranges []rune) bool {
 }
 
 func (p *Pattern) parse(f *Frame) {
+	f.noNumber()
 	m := p.re.FindSubmatchIndex(f.line)
 	if m == nil || !p.weight(f, m) {
 		f.noNumber()

@@ -51,10 +51,11 @@ func (d *Decoder) EndReport() { d.report.inside = false }
 // watch marks the frame when it belongs to a report.
 func (r *report) watch(f *Frame) {
 	kind := f.Kind
-	if isDashes(f.line) {
+	switch {
+	case kind != Weight && isDashes(f.line):
 		r.turn()
 		f.InReport = true
-	} else {
+	case r.inside || r.dashes:
 		r.content(f)
 	}
 	r.twoBefore, r.before = r.before, kind

@@ -7,7 +7,8 @@ import "fmt"
 type Traffic struct {
 	Bytes   int // all bytes
 	High    int // with bit 7 set
-	Odd     int // with an odd count of ones
+	Marked  int // bytes of lines in which bit 7 came
+	Odd     int // of these, with an odd count of ones
 	Nul     int // NUL, which stands for a byte with a wrong parity
 	Strange int // control characters that no balance prints
 	Frames  int // lines, whole or damaged
@@ -23,18 +24,22 @@ func (t *Traffic) fade() {
 	if t.Bytes < mostBytes {
 		return
 	}
-	for _, n := range []*int{&t.Bytes, &t.High, &t.Odd, &t.Nul, &t.Strange, &t.Frames, &t.Read} {
+	for _, n := range []*int{&t.Bytes, &t.High, &t.Marked, &t.Odd, &t.Nul, &t.Strange, &t.Frames, &t.Read} {
 		*n /= 2
 	}
 }
 
 // Traffic gives the counts so far.
-func (d *Decoder) Traffic() Traffic { return d.traffic }
+func (d *Decoder) Traffic() Traffic {
+	t := d.traffic
+	t.mark(d.tally)
+	return t
+}
 
 // Diagnosis names a line setting that does not fit, from the recent bytes, in words
 // for the person at the bench; "" when nothing looks wrong.
 func (d *Decoder) Diagnosis() string {
-	t := d.traffic
+	t := d.Traffic()
 	strange := t.Nul + t.Strange
 	switch {
 	case t.Bytes < fewestBytes:
@@ -52,15 +57,23 @@ func (d *Decoder) Diagnosis() string {
 	return fmt.Sprintf("unreadable bytes (%d of %d have their top bit set and agree on no parity): wrong speed (baud)?", t.High, t.Bytes)
 }
 
+// mark takes the bytes of a line into account for the parity.
+func (t *Traffic) mark(line tally) {
+	if line.high > 0 {
+		t.Marked += line.bytes
+		t.Odd += line.odd
+	}
+}
+
 // likelyParity allows one byte in fifty to be disturbed.
 func (t Traffic) likelyParity() (Parity, bool) {
-	few := t.Bytes / 50
+	few := t.Marked / 50
 	switch {
-	case t.Bytes-t.Odd <= few:
+	case t.Marked-t.Odd <= few:
 		return OddParity, true
 	case t.Odd <= few:
 		return EvenParity, true
-	case t.Bytes-t.High <= few:
+	case t.Marked-t.High <= few:
 		return MarkParity, true
 	}
 	return NoParity, false
@@ -69,7 +82,7 @@ func (t Traffic) likelyParity() (Parity, bool) {
 // Parity gives the parity that the recent bytes carry in bit 7, NoParity when they
 // carry none or too few came.
 func (d *Decoder) Parity() Parity {
-	t := d.traffic
+	t := d.Traffic()
 	if t.Bytes < fewestBytes || t.High*10 <= t.Bytes {
 		return NoParity
 	}

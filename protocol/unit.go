@@ -38,6 +38,7 @@ func isUnit(u []byte) bool {
 	return true
 }
 
+// setUnit takes a unit without the blanks around it.
 func (f *Frame) setUnit(u []byte) {
 	f.Unit = intern(u)
 	f.Stable = f.Unit != "" && f.Unit != "!"
