@@ -74,6 +74,7 @@ type Station struct {
 	source  *line.Source // nil when Options.Open is given
 	pattern *protocol.Pattern
 	tare    chan chan error
+	pause   backoff
 
 	mu   sync.Mutex // over snap alone, never held while anything waits
 	snap Snapshot
@@ -87,8 +88,9 @@ func NewStation(cfg Config, opt Options) (*Station, error) {
 	cfg = cfg.WithDefaults()
 	s := &Station{
 		cfg: cfg, sink: opt.Sink, wall: opt.Wall, opener: opt.Open, tare: make(chan chan error),
-		log:  opt.Log.With().Str("station", cfg.Name).Logger(),
-		snap: Snapshot{Name: cfg.Name, State: Offline},
+		pause: backoff{first: 250 * time.Millisecond, longest: 5 * time.Second},
+		log:   opt.Log.With().Str("station", cfg.Name).Logger(),
+		snap:  Snapshot{Name: cfg.Name, State: Offline},
 	}
 	if s.sink == nil {
 		return nil, fmt.Errorf("station %s: there is no sink", cfg.Name)
@@ -173,7 +175,7 @@ func (s *Station) Run(ctx context.Context) (err error) {
 		return fmt.Errorf("station %s: %w", s.cfg.Name, err)
 	}
 	work := &work{Station: s, detector: detector, began: time.Now()}
-	var pause backoff
+	pause := s.pause
 	for {
 		err := work.once(ctx)
 		switch {
@@ -244,14 +246,13 @@ func (s *Station) well(codes ...string) {
 	})
 }
 
-// backoff grows the pause between attempts from 0.25 s to 5 s.
-type backoff struct{ next time.Duration }
+// backoff is the pause between attempts, half as long again each time.
+type backoff struct{ first, longest, next time.Duration }
 
 func (b *backoff) reset() { b.next = 0 }
 
 func (b *backoff) wait(ctx context.Context) error {
-	const first, longest = 250 * time.Millisecond, 5 * time.Second
-	b.next = min(max(first, b.next*3/2), longest)
+	b.next = min(max(b.first, b.next*3/2), b.longest)
 	timer := time.NewTimer(b.next)
 	defer timer.Stop()
 	select {
