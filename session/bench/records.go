@@ -79,7 +79,7 @@ func (b *Bench) backup(c *call) error {
 // documentTypes are the kinds of files that are handed out.
 var documentTypes = map[string]string{
 	".json": "application/json", ".jsonl": "application/jsonl", ".csv": "text/csv; charset=utf-8", ".svg": "image/svg+xml",
-	".pdf": "application/pdf", ".xml": "application/xml", "": "text/plain; charset=utf-8", ".txt": "text/plain; charset=utf-8",
+	".html": "text/html; charset=utf-8", ".pdf": "application/pdf", ".xml": "application/xml", "": "text/plain; charset=utf-8", ".txt": "text/plain; charset=utf-8",
 }
 
 // document hands out a file of a published run.
@@ -115,7 +115,7 @@ func (c *call) send(f fs.File, name, kind string) error {
 	h := c.w.Header()
 	h.Set("Content-Type", kind)
 	h.Set("Content-Disposition", fmt.Sprintf("inline; filename=%q", name))
-	h.Set("Content-Security-Policy", "default-src 'none'; style-src 'unsafe-inline'; sandbox")
+	h.Set("Content-Security-Policy", "default-src 'none'; style-src 'unsafe-inline'; img-src data:; sandbox")
 	if s, can := f.(io.ReadSeeker); can {
 		var modified time.Time
 		if info, err := f.Stat(); err == nil {

@@ -33,6 +33,14 @@ export async function call(method, path, body) {
   return data;
 }
 
+/** lines fetches JSON objects, one a line. */
+export async function lines(path) {
+  const answer = await fetch("/api/v1" + path, { headers: operator.name ? { "X-Operator": operator.name } : {} });
+  const text = await answer.text();
+  if (!answer.ok) throw new Problem(JSON.parse(text));
+  return text.split("\n").filter(Boolean).map((line) => JSON.parse(line));
+}
+
 export const get = (path) => call("GET", path);
 export const post = (path, body) => call("POST", path, body);
 export const put = (path, body) => call("PUT", path, body);

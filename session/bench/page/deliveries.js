@@ -26,11 +26,10 @@ export function list(run, acts) {
 }
 
 function row(run, d, current, acts, seen) {
-  const state = stateOf(d, current);
-  const doubtful = run.doubt?.delivery === d.delivery;
+  const state = stateOf(d, current, run.doubt?.delivery);
   const can = acts && !d.void ? acts : null;
-  return el("tr", { class: [state.word.replace(" ", "-"), doubtful && "doubtful"].filter(Boolean).join(" "), "aria-current": d.delivery === current ? "step" : undefined },
-    el("td", { class: "state" }, el("span", { title: state.word }, doubtful ? "?" : state.sign), el("span", { class: "unseen" }, doubtful ? "in doubt" : state.word)),
+  return el("tr", { class: state.word.replace(" ", "-"), "aria-current": d.delivery === current ? "step" : undefined },
+    el("td", { class: "state" }, el("span", { title: state.word }, state.sign), el("span", { class: "unseen" }, state.word)),
     el("td", {}, String(d.delivery), d.replaces ? el("small", {}, ` for ${d.replaces}`) : ""),
     el("td", { class: "plan" }, `${d.from_mL} → ${d.point_mL}`),
     el("td", {}, entered(d.start_reading, "reading_mL", "start reading", can, seen)),

@@ -56,7 +56,8 @@ function tube(run, capacity, y) {
 const trim = (x) => String(Math.round(x * 1000) / 1000);
 
 /** stateOf says where a delivery stands: the word, and the sign that carries it without colour. */
-export function stateOf(d, current) {
+export function stateOf(d, current, doubtful) {
+  if (d.delivery === doubtful) return { word: "in doubt", sign: "?" };
   if (d.void) return { word: "void", sign: "×" };
   if (d.correction_mL !== undefined) return { word: "done", sign: "✓" };
   if (d.delivery === current) return { word: "under way", sign: "▸" };
@@ -69,7 +70,7 @@ function lanes(run, y) {
   const replicates = Math.max(...run.deliveries.map((d) => d.replicate));
   const step = Math.min(laneW + 6, (curveLeft - 24 - lanesX) / replicates);
   for (const d of run.deliveries) {
-    const state = stateOf(d, current);
+    const state = stateOf(d, current, run.doubt?.delivery);
     const from = Number(d.start_reading?.reading_mL ?? d.from_mL), to = Number(d.end_reading?.reading_mL ?? d.point_mL);
     const x = lanesX + (d.replicate - 1) * step;
     const w = Math.max(3, Math.min(laneW, step - 4));

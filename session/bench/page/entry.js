@@ -29,7 +29,9 @@ export class Entry {
     if (event.key === "*") { event.preventDefault(); this.hooks.spoil(); }
     if (event.key === "+") { event.preventDefault(); (input === this.reading.input ? this.water : this.reading).input.focus(); }
     if (event.key === "-") event.preventDefault();
-    if (event.key === "Enter" && input === this.reading.input && this.water.wanted && this.water.input.value === "" && input.value !== "") {
+    // A start reading is recorded at once; an end reading waits for the temperature.
+    const both = this.reading.wanted?.role === "end" && this.water.wanted && this.water.input.value === "";
+    if (event.key === "Enter" && input === this.reading.input && both && input.value !== "") {
       event.preventDefault();
       this.water.input.focus();
     }
@@ -40,11 +42,17 @@ export class Entry {
     const next = (fact) => awaits.find((a) => a.fact === fact);
     this.reading.wanted = next("reading") || null;
     this.water.wanted = next("water_temp") || null;
-    this.node.hidden = !open;
+    this.node.hidden = !open || awaits.length === 0;
     for (const f of [this.reading, this.water]) {
       f.box.classList.toggle("wanted", Boolean(f.wanted));
       show(f.about, f.wanted ? ` delivery ${f.wanted.delivery}${f.wanted.role ? ", " + f.wanted.role : ""}` : " not awaited now");
     }
+  }
+
+  /** focus goes to the field that is wanted first. */
+  focus() {
+    if (this.node.hidden || document.getElementById("dialog").open) return;
+    (this.reading.wanted || !this.water.wanted ? this.reading : this.water).input.focus();
   }
 
   async submit() {
@@ -62,7 +70,7 @@ export class Entry {
       this.message.hidden = true;
       this.reading.input.value = "";
       this.water.input.value = "";
-      this.reading.input.focus();
+      this.focus();
     } catch (problem) {
       show(this.message, el("strong", {}, problem.message), " ", problem.hint, problem.reference && ` (reference ${problem.reference})`);
       this.message.hidden = false;

@@ -33,6 +33,13 @@ export class LiveWeight {
     this.draw();
   }
 
+  /** taken keeps the ring closed until the load moves again. */
+  taken(massG, text) {
+    this.takenG = massG;
+    this.tell(text, "taken");
+    this.draw();
+  }
+
   tell(text, kind) {
     show(this.news, text);
     this.news.dataset.kind = kind;
@@ -49,16 +56,19 @@ export class LiveWeight {
     if (!s) return this.without("…", "");
     if (s.state !== "online") return this.without("offline", [s.reason || "The balance is not there.", s.hint].filter(Boolean).join(" "));
     if (!live) return this.without("no value", "The balance has not sent a value yet. " + (s.hint || ""));
-    if (age > staleMS) return this.without("no live value", `No live value since ${Math.floor(age / 1000)} s. ${s.hint || "Is the balance switched on, and does it send?"}`);
+    if (age > staleMS) return this.without("silent", `no live value since ${Math.floor(age / 1000)} s. ${s.hint || "Is the balance switched on, and does it send?"}`);
     if (live.status) return this.without(live.status, statusWords[live.status] || "");
     this.node.dataset.state = live.stable ? "stable" : "moving";
     show(this.digits, live.text.trim());
     show(this.unit, live.unit || "g?");
     this.unit.title = live.unit ? "" : "The balance leaves the unit out while the value moves.";
     show(this.note, live.stable ? "at rest" : "moving", ` · ${age < 1000 ? "now" : Math.floor(age / 1000) + " s ago"}`);
-    const progress = Math.max(0, Math.min(1, live.progress || 0));
+    if (!live.stable) this.takenG = "";
+    const taken = Boolean(this.takenG);
+    const progress = taken ? 1 : Math.max(0, Math.min(1, live.progress || 0));
     this.arc.setAttribute("stroke-dashoffset", around * (1 - progress));
-    show(this.phase, progress >= 1 ? "settled" : progress > 0 ? "settling" : live.stable ? "at rest" : "moving");
+    this.arc.classList.toggle("taken", taken);
+    show(this.phase, taken ? "✓ taken" : progress >= 1 ? "settled" : progress > 0 ? "settling" : live.stable ? "at rest" : "moving");
   }
 
   without(word, text) {

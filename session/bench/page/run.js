@@ -35,6 +35,11 @@ export class RunView {
 
   end() { this.live.end(); }
 
+  /** focus puts the cursor where the next number goes. */
+  focus() {
+    if (this.run?.run.state === "open") this.entry.focus();
+  }
+
   path(more = "") { return `/runs/${encodeURIComponent(this.id)}${more}`; }
 
   async load() {
@@ -51,6 +56,7 @@ export class RunView {
     const run = await post(this.path("/" + what), body);
     this.asked++;
     this.set(run);
+    setTimeout(() => this.focus(), 0); // after a dialog has closed
     return run;
   }
 
@@ -179,13 +185,14 @@ export class RunView {
   showSigning(run) {
     const button = (text, act, kind = "quiet") => el("button", { type: "button", class: kind, onclick: act }, text);
     const state = run.run.state;
-    const done = state === "open" && !run.awaits.length;
+    const done = state === "open" && !run.awaits?.length;
     const verdict = run.conformity && el("p", { class: "verdict" }, el("strong", {}, `${run.conformity.verdict} class ${run.conformity.class}`),
       ` (±${run.conformity.mpe_mL} mL, ${run.conformity.standard}, rule ${run.conformity.rule}), probability of conformity ${run.conformity.p_conform.toFixed(3)}`);
     show(this.signing, (done || state !== "open") && verdict,
       run.documents && el("p", { class: "documents" }, "Documents: ", (run.documents ?? []).map((name) => [el("a", { href: `/api/v1/runs/${run.run.id}/documents/${name}` }, name), " "])),
       el("div", { class: "buttons" },
         done && button("Sign as performed", () => this.sign("finish", "performed", "Sign as performed"), "go"),
+        (state === "published" || state === "abandoned") && button("Back to the bench", () => { location.hash = "#/"; dispatchEvent(new Event("hashchange")); }),
         state === "finished" && button("Review and sign", () => this.sign("review", "reviewed", "Sign as reviewed"), "go"),
         state === "finished" && button("Sign the review of changes", () => this.sign("trail-review", "trail-reviewed", "Sign the review of changes")),
         state === "finished" && button("Reopen", () => this.step("reopen", "Reopen the run", "The signature does not count any more; the record keeps it.")),
@@ -209,7 +216,7 @@ export class RunView {
     if (event.subject !== this.id) return;
     if (event.kind === "weighing") {
       sound.taken();
-      this.live.tell(`Taken: ${event.body.mass_g} g, ${event.body.role} delivery ${event.body.delivery}`, "taken");
+      this.live.taken(event.body.mass_g, `Taken: ${event.body.mass_g} g, ${event.body.role} delivery ${event.body.delivery}`);
     } else if (event.kind === "seen") {
       sound.seen();
       this.live.tell(`Seen, not taken: ${event.body.mass_g} g; ${event.body.why}`, "seen");

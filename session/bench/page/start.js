@@ -7,6 +7,7 @@ import { listen } from "/stream.js";
 import { setUpSound } from "/sound.js";
 import { RunView } from "/run.js";
 import { LiveWeight } from "/live.js";
+import { recordPage } from "/record.js";
 import { runsPage, burettesPage, peoplePage, openForm } from "/lists.js";
 
 const house = { me: { sign_in: false, operator: "", roles: [] }, stations: new Map(), connected: false, view: null };
@@ -73,7 +74,6 @@ async function runView(id) {
   await view.load();
   view.station = view.run.run.station;
   house.view = view;
-  if (view.run.run.state === "open") setTimeout(() => view.entry.reading.input.focus(), 0);
   return view.node;
 }
 
@@ -86,15 +86,16 @@ async function route() {
   old?.end?.();
   const [, name, argument] = location.hash.split("/");
   try {
-    const node = await (name === "runs" ? runsPage() : name === "burettes" ? burettesPage() : name === "people" ? peoplePage(house)
+    const node = await (name === "runs" ? runsPage() : name === "burettes" ? burettesPage() : name === "people" ? peoplePage(house) : name === "record" ? recordPage()
       : name === "run" ? runView(decodeURIComponent(argument)) : bench());
     if (mine !== turn) return;
     show(page, node);
     tell();
+    house.view?.focus?.();
   } catch (problem) {
     if (mine === turn) show(page, el("div", { class: "page" }, el("p", { class: "problem", role: "alert" }, el("strong", {}, problem.message), " ", problem.hint || "")));
   }
-  for (const a of document.querySelectorAll("nav a")) a.toggleAttribute("aria-current", a.getAttribute("href") === "#/" + (name || ""));
+  for (const a of document.querySelectorAll("nav a")) a.toggleAttribute("aria-current", a.getAttribute("href") === "#/" + (name === "run" ? "runs" : name || ""));
 }
 
 /** tell hands the newest state of its station to whatever is shown. */
@@ -116,6 +117,7 @@ function connected(now) {
   if (house.view?.live) { house.view.live.connected = now; house.view.live.draw(); }
 }
 
+for (const a of document.querySelectorAll('a[href="#/"]')) a.addEventListener("click", () => { if ((location.hash || "#/") === "#/") route(); });
 setUpSound(document.getElementById("sound"));
 try {
   if (await who()) {
