@@ -1,7 +1,5 @@
 package protocol
 
-import "bytes"
-
 // The columns of a body, counted from 0: a sign, nine columns for the number, flush
 // right, a separator, and the unit, flush left. In the 22-character form six columns
 // of identification code stand before it.
@@ -79,7 +77,10 @@ func unitColumns(body []byte, end int) (unit []byte, ok bool) {
 	if start >= len(body) {
 		return nil, len(body) == end
 	}
-	unit = bytes.TrimRight(body[start:], " ")
+	unit = body[start:]
+	for len(unit) > 0 && unit[len(unit)-1] == ' ' {
+		unit = unit[:len(unit)-1]
+	}
 	filled := len(body) >= start+unitLength
 	return unit, isUnit(unit) && (filled || len(unit) == len(body)-start && len(unit) > 0)
 }

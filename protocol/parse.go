@@ -49,7 +49,10 @@ func (f *Frame) parseWeight(line []byte) bool {
 		return true
 	}
 	if len(line) > idLength && f.columns(line[idLength:]) {
-		if id := line[:idLength]; isIdentification(id) {
+		if id := line[:idLength]; string(id) == "N     " {
+			f.ID = "N"
+			return true
+		} else if isIdentification(id) {
 			f.ID = intern(bytes.Trim(id, " "))
 			return true
 		}

@@ -46,6 +46,7 @@ func TestWhatIsEncodedComesBack(t *testing.T) {
 	rapid.Check(t, func(t *rapid.T) {
 		l, d := plainLine(t)
 		line := encoded(t, d, l)
+		checkPortions(t, line, []int{1}) // the short way and the long way agree
 		n := 0
 		hear := func(f *Frame) {
 			n++

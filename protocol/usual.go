@@ -22,16 +22,10 @@ func (f *Frame) usual(line []byte) bool {
 		}
 		line = line[idLength:]
 	}
-	if len(line) != bodyLength || !isSign(line[0]) || line[numberStart] != ' ' || line[numberEnd] != ' ' {
+	if len(line) != bodyLength || !isSign(line[0]) || !f.usualNumber(line) {
 		return false
 	}
-	blanks := leadingBlanks(binary.LittleEndian.Uint64(line[numberStart+1:]))
-	if blanks < 0 {
-		return false
-	}
-	f.digits = line[numberStart+1+blanks : numberEnd]
-	f.Sign, f.UnverifiedDigits = line[0], 0
-	f.Plain, f.Stable = true, true
+	f.Sign, f.Plain, f.Stable = line[0], true, true
 	switch string(line[unitStart:]) {
 	case "g  ":
 		f.Unit = "g"
@@ -43,6 +37,29 @@ func (f *Frame) usual(line []byte) bool {
 		return false
 	}
 	return true
+}
+
+// usualNumber reads a number of eight columns, or one of seven and a digit in brackets.
+func (f *Frame) usualNumber(body []byte) bool {
+	const open = numberEnd - 2
+	switch {
+	case body[numberEnd] == ' ' && body[numberStart] == ' ':
+		blanks := leadingBlanks(binary.LittleEndian.Uint64(body[numberStart+1:]))
+		if blanks < 0 {
+			return false
+		}
+		f.digits, f.UnverifiedDigits = body[numberStart+1+blanks:numberEnd], 0
+		return true
+	case body[numberEnd] == ']' && body[open] == '[' && isDigit(body[open+1]):
+		blanks := leadingBlanks(binary.LittleEndian.Uint64(body)&^0xFF | ' ') // a blank for the sign
+		if blanks < 0 {
+			return false
+		}
+		f.digits = append(append(f.store[:0], body[blanks:open]...), body[open+1])
+		f.UnverifiedDigits = 1
+		return true
+	}
+	return false
 }
 
 // leadingBlanks looks at eight characters at once, the first of them in the lowest
