@@ -181,6 +181,9 @@ func (c *Conn) readError(err error) error {
 		return io.EOF
 	}
 	c.record.mark("gone")
+	if errors.Is(err, io.EOF) { // of a server or a device: not the end of a recording
+		err = io.ErrUnexpectedEOF
+	}
 	return fault(c.spec, fmt.Errorf("%w: %w", errGone, err))
 }
 

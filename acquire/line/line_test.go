@@ -138,6 +138,9 @@ func TestServerThatClosesIsGone(t *testing.T) {
 	if session.FaultCode(err) != CodeGone {
 		t.Errorf("read after the server closed: %v, want %s", err, CodeGone)
 	}
+	if errors.Is(err, io.EOF) {
+		t.Errorf("a server that closed looks like a recording that is over: the station would not come back")
+	}
 }
 
 func TestCloseWakesTheReader(t *testing.T) {
