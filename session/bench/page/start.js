@@ -83,6 +83,7 @@ async function route() {
   const mine = ++turn;
   const old = house.view;
   house.view = null;
+  house.failed = false;
   old?.end?.();
   const [, name, argument] = location.hash.split("/");
   try {
@@ -93,6 +94,7 @@ async function route() {
     tell();
     house.view?.focus?.();
   } catch (problem) {
+    house.failed = true;
     if (mine === turn) show(page, el("div", { class: "page" }, el("p", { class: "problem", role: "alert" }, el("strong", {}, problem.message), " ", problem.hint || "")));
   }
   for (const a of document.querySelectorAll("nav a")) a.toggleAttribute("aria-current", a.getAttribute("href") === "#/" + (name === "run" ? "runs" : name || ""));
@@ -109,7 +111,7 @@ function tell() {
 }
 
 function connected(now) {
-  if (now && !house.connected && house.view?.load) house.view.load().catch(() => {});
+  if (now && !house.connected) house.failed ? route() : house.view?.load?.().catch(() => {});
   house.connected = now;
   const node = document.getElementById("connection");
   show(node, now ? "● connected" : "○ not connected: trying again");
