@@ -4,7 +4,6 @@ import (
 	"bytes"
 	"context"
 	"encoding/json"
-	"errors"
 	"fmt"
 	"io"
 	"net/http"
@@ -88,13 +87,4 @@ func asProblem(resp *http.Response, answer []byte) error {
 		return fmt.Errorf("%s %s: %s", resp.Request.Method, resp.Request.URL.Path, resp.Status)
 	}
 	return p
-}
-
-// problemCode gives the code of a refused call, "" when err is something else.
-func problemCode(err error) string {
-	var p *problem
-	if errors.As(err, &p) {
-		return p.Code
-	}
-	return ""
 }

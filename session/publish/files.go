@@ -1,9 +1,10 @@
 // Package publish makes the documents of a finished run and puts them into the drop:
 // whole, once, and only when everything is durable.
 //
-// The documents are functions of the run's record alone, so that they come out the
-// same when they are built again. The package decides nothing about the run and
-// computes nothing: it rounds, draws and writes.
+// The documents are functions of the run's record alone: built again they say the same
+// (the PDF's bytes differ, because its library orders the embedded fonts anew each
+// time). The package decides nothing about the run and, but for the simulation in
+// uncertainty.txt, computes nothing: it rounds, draws and writes.
 package publish
 
 import (
