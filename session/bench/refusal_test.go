@@ -42,6 +42,7 @@ func TestRefusals(t *testing.T) {
 		{"meant for another delivery", "POST", run + "/facts", `{"reading":"10.02","delivery":2}`, 409, "not-awaited"},
 		{"meant for another role", "POST", run + "/facts", `{"reading":"10.02","role":"start"}`, 409, "not-awaited"},
 		{"unknown field", "POST", run + "/facts", `{"readng":"10.02"}`, 400, "bad-json"},
+		{"a time of one's own", "POST", run + "/facts", `{"reading":"10.02","at":"1999-01-01T00:00:00Z"}`, 400, "bad-json"},
 		{"wrong type", "POST", run + "/facts", `{"delivery":"one"}`, 400, "bad-json"},
 		{"an array", "POST", run + "/facts", `[]`, 400, "bad-json"},
 		{"cut off", "POST", run + "/facts", `{"reading":"10.0`, 400, "bad-json"},

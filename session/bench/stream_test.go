@@ -168,6 +168,22 @@ func TestOpenStreamsDoNotHoldUpAShutdown(t *testing.T) {
 	}
 }
 
+// When the ledger takes nothing, the page hears of it at once.
+func TestTroubleIsTold(t *testing.T) {
+	l, run := opened(t, shortPlan)
+	h := l.hear("")
+	h.next("station")
+	l.record.mu.Lock()
+	l.record.fail = &session.Fault{Code: "disk-full", Message: "The disk is full.", Hint: "Make room.", Err: errors.New("no space")}
+	l.record.mu.Unlock()
+	if a := l.call("POST", run+"/facts", `{"reading":"0.00"}`); a.status != 503 || a.code() != "disk-full" {
+		t.Errorf("an entry that cannot be recorded: %d %s", a.status, a.text)
+	}
+	if m := h.next("trouble"); !bytes.Contains(m.data, []byte("Make room.")) {
+		t.Errorf("told %s", m.data)
+	}
+}
+
 // stuck is a connection whose other side takes nothing: a write ends with its deadline.
 type stuck struct {
 	header   http.Header

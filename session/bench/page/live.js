@@ -55,7 +55,7 @@ export class LiveWeight {
     if (!this.connected) return this.without("no connection", "The page has lost the daemon; it tries again by itself. Nothing you enter now is recorded.");
     if (!s) return this.without("…", "");
     if (s.state !== "online") return this.without("offline", [s.reason || "The balance is not there.", s.hint].filter(Boolean).join(" "));
-    if (!live) return this.without("no value", "The balance has not sent a value yet. " + (s.hint || ""));
+    if (!live) return this.without("no value", ["The balance has not sent a value yet.", s.reason, s.hint].filter(Boolean).join(" "));
     if (age > staleMS) return this.without("silent", `no live value since ${Math.floor(age / 1000)} s. ${s.hint || "Is the balance switched on, and does it send?"}`);
     if (live.status) return this.without(live.status, statusWords[live.status] || "");
     this.node.dataset.state = live.stable ? "stable" : "moving";
