@@ -3,7 +3,9 @@ package bench
 import (
 	"bytes"
 	"fmt"
+	"io/fs"
 	"math"
+	"regexp"
 	"slices"
 	"strings"
 	"testing"
@@ -256,5 +258,34 @@ func TestPagesAreServedAndChecked(t *testing.T) {
 	}
 	if again := l.call("GET", "/", "", ifNoneMatch(a.header.Get("ETag"))); again.status != 304 {
 		t.Errorf("the same page again: %d", again.status)
+	}
+}
+
+// The page has no build step that would find a missing part, so this does.
+func TestThePageHasAllItsParts(t *testing.T) {
+	l := open(t, nil)
+	parts, err := fs.ReadDir(pageFiles, "page")
+	if err != nil {
+		t.Fatal(err)
+	}
+	reference := regexp.MustCompile(`(?:from|src=|href=) ?"(/[a-z]+\.[a-z]+)"`)
+	exported := regexp.MustCompile(`import \{([^}]*)\} from "(/[a-z]+\.js)"`)
+	for _, part := range parts {
+		text := string(l.must(200, "GET", "/"+part.Name(), "").text)
+		for _, m := range reference.FindAllStringSubmatch(text, -1) {
+			l.must(200, "GET", m[1], "")
+		}
+		for _, m := range exported.FindAllStringSubmatch(text, -1) {
+			from := string(l.must(200, "GET", m[2], "").text)
+			for _, name := range strings.Split(m[1], ",") {
+				name = strings.TrimSpace(name)
+				if !regexp.MustCompile(`export (async )?(function|const|class) ` + name + `\b`).MatchString(from) {
+					t.Errorf("%s takes %s from %s, which does not have it", part.Name(), name, m[2])
+				}
+			}
+		}
+		if strings.Contains(text, "innerHTML") || strings.Contains(text, "eval(") {
+			t.Errorf("%s makes markup or program text out of data", part.Name())
+		}
 	}
 }
