@@ -333,3 +333,45 @@ func TestARunRecomputesFromItsRawBytes(t *testing.T) {
 		t.Errorf("a changed weight was not found: %v", err)
 	}
 }
+
+func TestACorrectedRunSupersedesTheOldOne(t *testing.T) {
+	h := newHouse(t)
+	old := h.open(Plan{Replicates: 1})
+	h.work(old)
+	h.must(old.Finish("M. Berg", false))
+	h.refused("cannot-supersede")(h.book.OpenRun(Request{Burette: "B-07", Station: "bench-2", Supersedes: old.ID}, old.Opening.Setting, Identity{}, testDay))
+	h.record(Daemon, Draft{RunPublished, old.ID, PublishedBody{Folder: old.ID}})
+	h.must(h.book.OpenRun(Request{
+		Burette: "B-07", Station: "bench-1", Plan: Plan{Replicates: 1}, Supersedes: old.ID, Condition: "thermometer T-4 was off",
+		Ambient: &AmbientBody{number("21.3"), number("1004.2"), number("45")},
+	}, old.Opening.Setting, Identity{}, testDay))
+	corrected := h.book.Runs[h.book.Order[1]]
+	h.work(corrected)
+	h.must(corrected.Finish("M. Berg", false))
+	h.record(Daemon, Draft{RunPublished, corrected.ID, PublishedBody{Folder: corrected.ID}}, Draft{RunSuperseded, old.ID, SupersededBody{By: corrected.ID, Reason: "thermometer T-4 was off"}})
+	if old.Document().Run.SupersededBy != corrected.ID || corrected.Document().Run.Supersedes != old.ID {
+		t.Errorf("old says %q, new says %q", old.Document().Run.SupersededBy, corrected.Document().Run.Supersedes)
+	}
+	h.refused("cannot-supersede")(h.book.OpenRun(Request{Burette: "B-07", Station: "bench-1", Supersedes: old.ID}, old.Opening.Setting, Identity{}, testDay))
+}
+
+func TestABalanceThatWasNotCheckedTodayOpensNoRun(t *testing.T) {
+	h := newHouse(t)
+	setting := Setting{Inputs: calc.DefaultInputs(), Rule: "simple", CheckWeight: "100 g"}
+	open := func() ([]Draft, error) {
+		return h.book.OpenRun(Request{Burette: "B-07", Station: "bench-1"}, setting, Identity{}, testDay)
+	}
+	check := func(mass string) {
+		sample := LogSampleBody{Label: "100 g", Text: mass, Unit: "g", Stable: true, MassG: number(mass)}.CheckAgainst(number("100.0000"), number("0.0005"))
+		h.record(Station("bench-1"), Draft{LogSample, "bench-1", sample})
+	}
+	h.refused("balance-not-checked")(open())
+	check("100.0006")
+	h.refused("balance-off")(open())
+	check("99.9995")
+	if _, err := open(); err != nil {
+		t.Errorf("after a good check: %v", err)
+	}
+	testDayAfter := testDay.AddDate(0, 0, 1)
+	h.refused("balance-not-checked")(h.book.OpenRun(Request{Burette: "B-07", Station: "bench-1"}, setting, Identity{}, testDayAfter))
+}

@@ -90,7 +90,7 @@ func (d *daemon) Run(ctx context.Context) error {
 	defer stopDesk()
 	var atDesk, working sync.WaitGroup
 	atDesk.Go(func() { d.report("desk", d.desk.Run(deskCtx)) })
-	if err := d.begin(ctx); err != nil {
+	if err := d.begin(context.WithoutCancel(ctx)); err != nil {
 		stopDesk()
 		atDesk.Wait()
 		return errors.Join(err, d.closeAll())
