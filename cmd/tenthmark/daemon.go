@@ -29,6 +29,7 @@ type daemon struct {
 	outbox   *outbox
 	listener net.Listener
 	server   *http.Server
+	ready    func() // called when calls are answered, may be nil
 	logged   int64 // the newest log sample in the drop's files; 0: not looked up yet
 }
 
@@ -103,6 +104,9 @@ func (d *daemon) Run(ctx context.Context) error {
 	served := make(chan error, 1)
 	go func() { served <- d.serve() }()
 	notify("READY=1")
+	if d.ready != nil {
+		d.ready()
+	}
 	var err error
 	select {
 	case <-ctx.Done():
@@ -221,7 +225,7 @@ func runServe(ctx context.Context, args []string, io stdio) int {
 	if err != nil {
 		return complain(io.err, err)
 	}
-	fmt.Fprintf(io.out, "tenthmark is at work; the page is at %s\n", d.Address())
+	d.ready = func() { fmt.Fprintf(io.out, "tenthmark is at work; the page is at %s\n", d.Address()) }
 	if err := d.Run(ctx); err != nil {
 		return complain(io.err, err)
 	}
