@@ -30,7 +30,7 @@ type daemon struct {
 	listener net.Listener
 	server   *http.Server
 	ready    func() // called when calls are answered, may be nil
-	logged   int64 // the newest log sample in the drop's files; 0: not looked up yet
+	logged   int64  // the newest log sample in the drop's files; 0: not looked up yet
 }
 
 // newDaemon opens the ledger, replays it and binds the page's address. Nothing runs

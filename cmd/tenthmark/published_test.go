@@ -15,6 +15,7 @@ import (
 	"github.com/santhosh-tekuri/jsonschema/v6"
 
 	"tenthmark/session"
+	"tenthmark/session/publish"
 )
 
 // published runs a demo for a seed and gives the folder that it published.
@@ -161,5 +162,43 @@ func TestTheDemoMisreadsOnceAndSpillsOnce(t *testing.T) {
 	}
 	if amended != 1 || void != 1 || doc.Conformity == nil || doc.Run.ReviewedBy == "" {
 		t.Errorf("%d amendments, %d void deliveries, conformity %v, reviewed by %q", amended, void, doc.Conformity, doc.Run.ReviewedBy)
+	}
+}
+
+// docs/pickup.py hands over whole folders, each once, and leaves a damaged one alone.
+func TestThePickupScriptTakesEachRunOnce(t *testing.T) {
+	needs(t, "python3")
+	root := t.TempDir()
+	drop, done, took := filepath.Join(root, "drop"), filepath.Join(root, "done"), filepath.Join(root, "took")
+	put := func(name string) {
+		if _, err := (publish.Drop{Root: drop}).Put(name, []publish.File{{Name: "run.json", Bytes: []byte("{}\n")}}); err != nil {
+			t.Fatal(err)
+		}
+	}
+	pickUp := func() string {
+		cmd := exec.Command("python3", "../../docs/pickup.py", drop, done, "sh", "-c", `basename "$0" >> "`+took+`"`)
+		if out, err := cmd.CombinedOutput(); err != nil {
+			t.Fatalf("pickup.py: %v\n%s", err, out)
+		}
+		text, err := os.ReadFile(took)
+		if err != nil && !os.IsNotExist(err) {
+			t.Fatal(err)
+		}
+		return strings.Join(strings.Fields(string(text)), " ")
+	}
+	put("B-07-20261201-1")
+	put("B-07-20261201-2")
+	if err := os.Mkdir(filepath.Join(drop, ".B-07-20261201-3.x.part"), 0o700); err != nil {
+		t.Fatal(err)
+	}
+	if err := os.WriteFile(filepath.Join(drop, "B-07-20261201-2", "run.json"), []byte("{ }\n"), 0o600); err != nil {
+		t.Fatal(err)
+	}
+	if got := pickUp(); got != "B-07-20261201-1" {
+		t.Errorf("first picked up %q, want the whole folder alone", got)
+	}
+	put("B-07-20261202-1")
+	if got := pickUp(); got != "B-07-20261201-1 B-07-20261202-1" {
+		t.Errorf("then picked up %q, want each once", got)
 	}
 }
