@@ -173,7 +173,8 @@ func (tr *trial) frame(f *protocol.Frame) {
 	if !f.Stable && !tr.cell.unmarked {
 		tr.stableAt = tr.now + tr.step
 	}
-	s, ok := tr.detector.Observe(tr.now, sampleOf(f))
+	sample, _ := sampleOf(f)
+	s, ok := tr.detector.Observe(tr.now, sample)
 	if !ok {
 		return
 	}

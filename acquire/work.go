@@ -224,7 +224,9 @@ func (w *work) frame(f *protocol.Frame) {
 	} else if w.poll.hear(f, w.at) {
 		w.diagnoseAutoPrint()
 	}
-	w.observe(sampleOf(f))
+	if s, means := sampleOf(f); means {
+		w.observe(s)
+	}
 	w.show(f)
 	if f.Kind == protocol.Error {
 		w.diagnose(Diagnosis{DiagnoseError, fmt.Sprintf("The balance reports error %s.", f.Code), "Its operating manual explains the code; it often asks for an adjustment or an empty pan."})
@@ -259,17 +261,32 @@ func (w *work) observe(s settle.Sample) {
 	}
 }
 
-// sampleOf says what a line means for settling.
-func sampleOf(f *protocol.Frame) settle.Sample {
+// sampleOf says what a line means for settling. Some lines mean nothing: texts, as the
+// date that some balances print before each value, and numbers with a code of their
+// own, as the content of a tare memory.
+func sampleOf(f *protocol.Frame) (s settle.Sample, means bool) {
 	switch {
-	case f.Kind == protocol.Weight && f.Plain && !f.InReport:
-		return settle.Sample{Kind: settle.Weight, MassG: f.MassG(), Unit: f.Unit, Stable: f.Stable, Raw: f.Raw}
+	case f.InReport:
+		return settle.Sample{Kind: settle.Disturbed}, true
+	case f.Kind == protocol.Weight && f.Plain:
+		return settle.Sample{Kind: settle.Weight, MassG: f.MassG(), Unit: f.Unit, Stable: f.Stable, Raw: f.Raw}, true
+	case f.Kind == protocol.Text, f.Kind == protocol.Weight && !isDisplay(f.ID), f.Kind == protocol.Status && f.Condition == protocol.Final:
+		return settle.Sample{}, false
 	case f.Kind == protocol.Blank:
-		return settle.Sample{Kind: settle.Blank}
+		return settle.Sample{Kind: settle.Blank}, true
 	case f.Kind == protocol.Status && (f.Condition == protocol.Overload || f.Condition == protocol.Underload):
-		return settle.Sample{Kind: settle.Beyond}
+		return settle.Sample{Kind: settle.Beyond}, true
 	}
-	return settle.Sample{Kind: settle.Disturbed}
+	return settle.Sample{Kind: settle.Disturbed}, true
+}
+
+// isDisplay says whether a line with this code shows what the display shows.
+func isDisplay(id string) bool {
+	switch id {
+	case "", "N", "N1", "G#":
+		return true
+	}
+	return false
 }
 
 // deliver hands the taken weights over.
