@@ -7,6 +7,7 @@ import (
 	"time"
 
 	"tenthmark/session"
+	"tenthmark/session/ledger"
 )
 
 // chores does what is due by the clock: a signed checkpoint at the day's end, the
@@ -49,9 +50,36 @@ func (d *daemon) signOfLife(ctx context.Context) {
 	}
 }
 
+// dayEnd signs a checkpoint and, where a folder for them is configured, writes the
+// day's events with it beside the earlier ones.
 func (d *daemon) dayEnd(ctx context.Context) error {
-	_, err := d.ledger.Checkpoint(ctx)
+	folder := d.config.Ledger.SegmentFolder
+	if folder == "" {
+		_, err := d.ledger.Checkpoint(ctx)
+		return err
+	}
+	next, err := nextSegment(folder)
+	if err != nil {
+		return err
+	}
+	_, err = d.ledger.ExportSegment(ctx, folder, next)
 	return err
+}
+
+// nextSegment gives the number of the first event that no segment in the folder has.
+func nextSegment(folder string) (int64, error) {
+	names, err := filepath.Glob(filepath.Join(folder, "events-*.jsonl"))
+	if err != nil {
+		return 0, fmt.Errorf("segments: %w", err)
+	}
+	next := int64(0)
+	for _, name := range names {
+		var first, last int64
+		if _, err := fmt.Sscanf(filepath.Base(name), "events-%d-%d.jsonl", &first, &last); err == nil {
+			next = max(next, last+1)
+		}
+	}
+	return next, nil
 }
 
 // backupBody is the body of a BackupMade event.
@@ -61,13 +89,18 @@ type backupBody struct {
 }
 
 func (d *daemon) backup(ctx context.Context, now time.Time) error {
-	file := filepath.Join(d.config.Ledger.BackupFolder, fmt.Sprintf("ledger-%s.db", now.UTC().Format("20060102T150405Z")))
+	_, err := d.backupTo(ctx, filepath.Join(d.config.Ledger.BackupFolder, fmt.Sprintf("ledger-%s.db", now.UTC().Format("20060102T150405Z"))))
+	return err
+}
+
+// backupTo makes a verified copy and records that.
+func (d *daemon) backupTo(ctx context.Context, file string) (ledger.BackupReport, error) {
 	made, err := d.ledger.Backup(ctx, file)
 	if err != nil {
-		return err
+		return made, err
 	}
 	_, err = d.desk.Do(ctx, session.Daemon, func(*session.Book) ([]session.Draft, error) {
 		return []session.Draft{{Kind: session.BackupMade, Body: backupBody{File: filepath.Base(file), Events: made.Events}}}, nil
 	})
-	return err
+	return made, err
 }

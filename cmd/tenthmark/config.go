@@ -38,11 +38,12 @@ type config struct {
 }
 
 type ledgerConfig struct {
-	Path         string `toml:"path"`
-	Key          string `toml:"key"`
-	Origin       string `toml:"origin"`
-	BackupFolder string `toml:"backup_folder"`
-	BackupHours  int    `toml:"backup_hours"`
+	Path          string `toml:"path"`
+	Key           string `toml:"key"`
+	Origin        string `toml:"origin"`
+	BackupFolder  string `toml:"backup_folder"`
+	BackupHours   int    `toml:"backup_hours"`
+	SegmentFolder string `toml:"segment_folder"`
 }
 
 type publishConfig struct {
@@ -204,7 +205,7 @@ func (c *config) resolve(folder string) {
 	if c.Ledger.Key == "" {
 		c.Ledger.Key = c.Ledger.Path + ".key"
 	}
-	for _, path := range []*string{&c.Ledger.Path, &c.Ledger.Key, &c.Ledger.BackupFolder, &c.Publish.Folder, &c.Bench.TLSCert, &c.Bench.TLSKey, &c.Laboratory.Logo} {
+	for _, path := range []*string{&c.Ledger.Path, &c.Ledger.Key, &c.Ledger.BackupFolder, &c.Ledger.SegmentFolder, &c.Publish.Folder, &c.Bench.TLSCert, &c.Bench.TLSKey, &c.Laboratory.Logo} {
 		at(path)
 	}
 	for i := range c.Stations {

@@ -21,7 +21,7 @@ func (d *daemon) furnish(zone *time.Location) error {
 	}
 	b, err := bench.New(bench.Options{
 		Desk: d.desk, Stations: d.stations, Records: records{d.ledger}, Documents: documents{d},
-		Backup:  func(ctx context.Context, file string) (any, error) { return d.ledger.Backup(ctx, file) },
+		Backup:  func(ctx context.Context, file string) (any, error) { return d.backupTo(ctx, file) },
 		Setting: d.config.setting, SignIn: d.config.Access.SignIn, Secrets: secrets,
 		TLS: d.config.Bench.TLSCert != "", Zone: zone, Version: version(), Log: d.log,
 	})
