@@ -37,7 +37,7 @@ type Config struct {
 
 	DwellS decimal.Number `toml:"dwell_s"`  // 2
 	BandG  decimal.Number `toml:"band_g"`   // from readability and repeatability, see settle.DefaultOptions
-	ReArmG decimal.Number `toml:"re_arm_g"` // likewise
+	ReArmG decimal.Number `toml:"rearm_g"` // likewise
 
 	PollIntervalS decimal.Number `toml:"poll_interval_s"` // 0.5, in capture mode poll
 	PollTimeoutS  decimal.Number `toml:"poll_timeout_s"`  // 15; 40 for a readability below 0.1 mg
@@ -134,7 +134,7 @@ func (c Config) Check() error {
 		{"u_sensitivity_rel", c.USensitivityRel},
 		{"dwell_s", c.DwellS},
 		{"band_g", c.BandG},
-		{"re_arm_g", c.ReArmG},
+		{"rearm_g", c.ReArmG},
 		{"poll_interval_s", c.PollIntervalS},
 		{"poll_timeout_s", c.PollTimeoutS},
 		{"reply_s", c.ReplyS},
@@ -147,7 +147,7 @@ func (c Config) Check() error {
 		return refuse("listen_s", fmt.Sprintf("listen_s = %s must not be negative", c.ListenS), "Give 0 or a positive number of seconds.")
 	}
 	if err := c.settleOptions().Check(); err != nil {
-		return refuse("settling", err.Error(), "Check capture (settle, print or poll), dwell_s, band_g and re_arm_g: the re-arm step must be larger than the band, the band at least one digit.")
+		return refuse("settling", err.Error(), "Check capture (settle, print or poll), dwell_s, band_g and rearm_g: the re-arm step must be larger than the band, the band at least one digit.")
 	}
 	return nil
 }
