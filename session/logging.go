@@ -11,29 +11,14 @@ import (
 // unattended under a label. A check weight has a nominal mass and a tolerance.
 type LogSampleBody struct {
 	Label      string         `json:"label"`
-	Text       string         `json:"text"` // the number as sent; "" when the display showed none
-	Unit       string         `json:"unit"`
+	MassG      decimal.Number `json:"mass_g"`
 	Stable     bool           `json:"stable"`
-	Status     string         `json:"status,omitempty"` // instead of a number: overload, no value for 12 s …
-	MassG      decimal.Number `json:"mass_g,omitzero"`
+	Raw        Raw            `json:"raw"`
+	Missing    int            `json:"missing,omitempty"` // samples that should stand before this one, while nothing came
 	NominalG   decimal.Number `json:"nominal_g,omitzero"`
 	DeviationG decimal.Number `json:"deviation_g,omitzero"`
 	Within     *bool          `json:"within,omitempty"` // the tolerance; absent without one
-}
-
-// CheckAgainst fills in how far a check weight is off. Both must be present.
-func (b LogSampleBody) CheckAgainst(nominalG, toleranceG decimal.Number) LogSampleBody {
-	if !b.MassG.IsSet() || !nominalG.IsSet() || !toleranceG.IsSet() {
-		return b
-	}
-	b.NominalG, b.DeviationG = nominalG, b.MassG.Sub(nominalG)
-	off := b.DeviationG
-	if off.Unscaled() < 0 {
-		off = decimal.New(-off.Unscaled(), off.Decimals())
-	}
-	within := off.Cmp(toleranceG) <= 0
-	b.Within = &within
-	return b
+	Came       Time           `json:"came"`             // when its line came; the event says when it was recorded
 }
 
 // Check is the latest check weighing of a station under a label.

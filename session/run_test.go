@@ -361,14 +361,13 @@ func TestABalanceThatWasNotCheckedTodayOpensNoRun(t *testing.T) {
 	open := func() ([]Draft, error) {
 		return h.book.OpenRun(Request{Burette: "B-07", Station: "bench-1"}, setting, Identity{}, testDay)
 	}
-	check := func(mass string) {
-		sample := LogSampleBody{Label: "100 g", Text: mass, Unit: "g", Stable: true, MassG: number(mass)}.CheckAgainst(number("100.0000"), number("0.0005"))
-		h.record(Station("bench-1"), Draft{LogSample, "bench-1", sample})
+	check := func(mass string, within bool) {
+		h.record(Station("bench-1"), Draft{LogSample, "bench-1", LogSampleBody{Label: "100 g", MassG: number(mass), Stable: true, Within: &within}})
 	}
 	h.refused("balance-not-checked")(open())
-	check("100.0006")
+	check("100.0006", false)
 	h.refused("balance-off")(open())
-	check("99.9995")
+	check("99.9995", true)
 	if _, err := open(); err != nil {
 		t.Errorf("after a good check: %v", err)
 	}

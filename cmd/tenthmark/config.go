@@ -32,7 +32,7 @@ type config struct {
 	Run        runConfig           `toml:"run"`
 	Inputs     inputsConfig        `toml:"inputs"`
 	Stations   []acquire.Config    `toml:"station"`
-	Logs       []logConfig         `toml:"log"`
+	Logs       []acquire.LogConfig `toml:"log"`
 
 	file string // where it came from
 }
@@ -69,14 +69,6 @@ type runConfig struct {
 	Standard string `toml:"standard"`
 	Method   string `toml:"method"`
 	Check    string `toml:"check_weight"` // label of the [[log]] that must be within its tolerance today
-}
-
-type logConfig struct {
-	Station    string         `toml:"station"`
-	Label      string         `toml:"label"`
-	EveryS     int            `toml:"every_s"` // 0: on every settling
-	NominalG   decimal.Number `toml:"nominal_g"`
-	ToleranceG decimal.Number `toml:"tolerance_g"`
 }
 
 // inputsConfig overrides calc's defaults; a key that is left out keeps its default.
@@ -283,7 +275,13 @@ func (c *config) checkLogs(text string) findings {
 			found = append(found, finding{c.file, fmt.Sprintf("The log %q names station %q, which is not there.", l.Label, l.Station), "Name one of the [[station]] sections.", lineOf(text, "log")})
 		}
 	}
-	if c.Run.Check != "" && !slices.ContainsFunc(c.Logs, func(l logConfig) bool { return l.Label == c.Run.Check && l.ToleranceG.IsSet() }) {
+	for _, l := range c.Logs {
+		var fault *session.Fault
+		if err := l.Check(); errors.As(err, &fault) {
+			found = append(found, finding{c.file, fault.Message, fault.Hint, lineOf(text, strings.TrimPrefix(fault.Code, "log-"))})
+		}
+	}
+	if c.Run.Check != "" && !slices.ContainsFunc(c.Logs, func(l acquire.LogConfig) bool { return l.Label == c.Run.Check && l.ToleranceG.IsSet() }) {
 		found = append(found, finding{c.file, fmt.Sprintf("check_weight = %q names no [[log]] with a tolerance.", c.Run.Check), "Give a [[log]] that label, a nominal_g and a tolerance_g.", lineOf(text, "check_weight")})
 	}
 	return found

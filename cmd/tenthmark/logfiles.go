@@ -22,7 +22,7 @@ const logFolder = "logs"
 
 // logColumns is the header of a log file. event is the sample's number in the ledger:
 // the file is a copy, and goes on after the last number that stands in it.
-var logColumns = []string{"event", "at", "station", "label", "mass_g", "text", "unit", "stable", "status", "nominal_g", "deviation_g", "within"}
+var logColumns = []string{"event", "at", "station", "label", "mass_g", "stable", "missing", "nominal_g", "deviation_g", "within"}
 
 // writeLogs brings the log files of the drop in step with the ledger: each sample
 // once, in order. A drop that is away is tried again at the next call.
@@ -88,8 +88,8 @@ func logRow(e session.Event) ([]string, error) {
 		within = strconv.FormatBool(*b.Within)
 	}
 	return []string{
-		strconv.FormatInt(e.Seq, 10), e.At.Format(session.TimeForm), e.Subject, b.Label, b.MassG.String(), b.Text, b.Unit,
-		strconv.FormatBool(b.Stable), b.Status, b.NominalG.String(), b.DeviationG.String(), within,
+		strconv.FormatInt(e.Seq, 10), b.Came.Format(session.TimeForm), e.Subject, b.Label, b.MassG.String(),
+		strconv.FormatBool(b.Stable), strconv.Itoa(b.Missing), b.NominalG.String(), b.DeviationG.String(), within,
 	}, nil
 }
 

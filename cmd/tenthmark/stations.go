@@ -18,7 +18,7 @@ import (
 type stations struct {
 	desk *desk.Desk
 	log  zerolog.Logger
-	logs []logConfig
+	logs map[string][]*acquire.Logger // of each station; a logger belongs to its station's goroutine
 	all  []*acquire.Station
 	news chan news // what stations tell that nobody waits for
 
@@ -37,7 +37,11 @@ type news struct {
 const waitingNews = 256
 
 func newStations(c *config, d *desk.Desk, log zerolog.Logger) (*stations, error) {
-	s := &stations{desk: d, log: log, logs: c.Logs, news: make(chan news, waitingNews), last: map[string]*bench.LastWeighing{}}
+	s := &stations{desk: d, log: log, news: make(chan news, waitingNews), last: map[string]*bench.LastWeighing{}}
+	var err error
+	if s.logs, err = loggers(c.Logs); err != nil {
+		return nil, err
+	}
 	for _, cfg := range c.Stations {
 		one, err := acquire.NewStation(cfg, acquire.Options{Sink: &sink{s}, Log: log})
 		if err != nil {
@@ -60,7 +64,6 @@ func (s *stations) Run(ctx context.Context) error {
 		})
 	}
 	running.Go(func() { s.write(ctx) })
-	running.Go(func() { s.runLogs(ctx) })
 	running.Wait()
 	return ctx.Err()
 }
@@ -148,15 +151,15 @@ func (k *sink) Weight(ctx context.Context, w acquire.Settled) {
 		k.to.log.Error().Err(err).Str("station", w.Station).Str("mass_g", weight.MassG.String()).Msg("weight not taken: it could not be recorded")
 		return
 	}
-	k.to.settled(ctx, w)
+	k.logSettled(ctx, w)
 	k.to.mu.Lock()
 	defer k.to.mu.Unlock()
 	last := events[len(events)-1]
 	k.to.last[w.Station] = &bench.LastWeighing{MassG: weight.MassG.String(), At: last.At}
 }
 
-// Live is fetched from the station by whoever shows it.
-func (k *sink) Live(string, acquire.Live) {}
+// Live is fetched from the station by whoever shows it; here only the logs look at it.
+func (k *sink) Live(station string, live acquire.Live) { k.logLive(station, live) }
 
 // Online records that the line is open, and who the balance is.
 func (k *sink) Online(station string, id session.Identity) {
