@@ -38,6 +38,10 @@ func runDemo(ctx context.Context, args []string, io stdio) int {
 	if code, done := parse(f, args); done {
 		return code
 	}
+	if f.NArg() > 0 {
+		fmt.Fprintf(io.err, "tenthmark demo takes flags only; %q is none.\n", f.Arg(0))
+		return exitUsage
+	}
 	if opt.pace < 0.1 || opt.pace > 100 {
 		fmt.Fprintln(io.err, "tenthmark demo: --pace is 0.1 to 100.")
 		return exitUsage
@@ -107,6 +111,9 @@ func newStageAt(ctx context.Context, opt demoOptions, listen string) (*stage, er
 	}
 	if err != nil {
 		return nil, fmt.Errorf("demo folder: %w", err)
+	}
+	if _, err := os.Stat(filepath.Join(s.folder, "ledger.db")); err == nil {
+		return nil, session.Refuse("folder-taken", "The folder "+s.folder+" holds a ledger already.", "Name a new folder with --out, or leave --out away.")
 	}
 	if s.balance, err = virtual.New(virtual.Options{Seed: opt.seed, Pace: opt.pace}); err != nil {
 		return nil, err
