@@ -2,6 +2,7 @@ package acquire
 
 import (
 	"context"
+	"path/filepath"
 	"strings"
 	"testing"
 
@@ -95,5 +96,82 @@ func TestTareOnCommandIsTakenAsZero(t *testing.T) {
 		if w := next(t, "the tared zero", sink.weights); w.MassG.String() != "0.0000" {
 			t.Errorf("after tare: %s g", w.MassG)
 		}
+	}
+}
+
+// A balance that prints only when asked, and answers at stability.
+func TestPollingOverARealTerminal(t *testing.T) {
+	b, pty := serve(t, virtual.Options{Seed: 11, Pace: 20, Output: virtual.OnRequest, Form: 16})
+	sink := newBench()
+	cfg := fast(pty.Path)
+	cfg.Capture, cfg.PollIntervalS = "poll", decimal.MustParse("0.03")
+	start(t, cfg, Options{Sink: sink})
+	next(t, "the empty pan", sink.weights)
+	for _, load := range []float64{45.1234, 0} {
+		b.SetLoad(load)
+		if w := next(t, "a weight", sink.weights); w.MassG.Float()-load > 0.0004 || load-w.MassG.Float() > 0.0004 {
+			t.Errorf("load %.4f g: taken %s g", load, w.MassG)
+		}
+	}
+}
+
+// Each press of PRINT is one weight, and nothing else is.
+func TestPrintOverARealTerminal(t *testing.T) {
+	b, pty := serve(t, virtual.Options{Seed: 12, Pace: 20, Output: virtual.OnRequest})
+	sink := newBench()
+	cfg := fast(pty.Path)
+	cfg.Capture = "print"
+	start(t, cfg, Options{Sink: sink})
+	next(t, "online", sink.online)
+	b.SetLoad(45.1234)
+	b.PressPrint()
+	first := next(t, "the first press", sink.weights)
+	b.PressPrint()
+	second := next(t, "the second press", sink.weights)
+	if first.MassG != second.MassG || first.Weight().Trace != nil {
+		t.Errorf("taken %s and %s, trace %v", first.MassG, second.MassG, first.Weight().Trace)
+	}
+	if len(sink.weights) != 0 {
+		t.Error("a weight was taken that nobody printed")
+	}
+}
+
+// What was recorded from a line gives the same weights when it is replayed.
+func TestRecordingGivesTheSameWeights(t *testing.T) {
+	b, pty := serve(t, virtual.Options{Seed: 13, Pace: 20})
+	sink := newBench()
+	cfg := fast(pty.Path)
+	cfg.Record = filepath.Join(t.TempDir(), "line.rec")
+	recorded, err := NewStation(cfg, Options{Sink: sink})
+	if err != nil {
+		t.Fatal(err)
+	}
+	ctx, cancel := context.WithCancel(t.Context())
+	ended := make(chan error, 1)
+	go func() { ended <- recorded.Run(ctx) }()
+	var want, got []string
+	for _, load := range []float64{0, 45.1234, 0, 54.9876} {
+		if load != 0 || len(want) > 0 {
+			b.SetLoad(load)
+		}
+		want = append(want, next(t, "a weight", sink.weights).MassG.String())
+	}
+	cancel()
+	next(t, "the station's end", ended)
+	again := newBench()
+	replay := fast("")
+	replay.Port, replay.Replay = "", cfg.Record
+	s, err := NewStation(replay, Options{Sink: again})
+	if err != nil {
+		t.Fatal(err)
+	}
+	if err := s.Run(t.Context()); err != nil {
+		t.Errorf("the end of a recording: %v, want nil", err)
+	}
+	for len(again.weights) > 0 {
+		got = append(got, (<-again.weights).MassG.String())
+	}
+	if strings.Join(got, " ") != strings.Join(want, " ") {
+		t.Errorf("replayed %v, want %v", got, want)
 	}
 }

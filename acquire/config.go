@@ -35,8 +35,8 @@ type Config struct {
 	Pattern       string `toml:"pattern"`         // for balances that print something else
 	UnitNeverSent bool   `toml:"unit_never_sent"` // the balance shows no stability; its lines are in g
 
-	DwellS decimal.Number `toml:"dwell_s"`  // 2
-	BandG  decimal.Number `toml:"band_g"`   // from readability and repeatability, see settle.DefaultOptions
+	DwellS decimal.Number `toml:"dwell_s"` // 2
+	BandG  decimal.Number `toml:"band_g"`  // from readability and repeatability, see settle.DefaultOptions
 	ReArmG decimal.Number `toml:"rearm_g"` // likewise
 
 	PollIntervalS decimal.Number `toml:"poll_interval_s"` // 0.5, in capture mode poll

@@ -7,6 +7,7 @@ import (
 	"io"
 	"strings"
 	"sync"
+	"sync/atomic"
 	"testing"
 	"testing/synctest"
 	"time"
@@ -313,16 +314,17 @@ func TestLateAnswersAreCountedOff(t *testing.T) {
 }
 
 func TestPollingTakesAWeight(t *testing.T) {
-	mass := "0.0000"
+	var mass atomic.Value
+	mass.Store("0.0000")
 	w := newWire(func(command string) string {
 		if command == "P" {
-			return weightLine(mass)
+			return weightLine(mass.Load().(string))
 		}
 		return ""
 	})
 	live(t, Config{Capture: "poll"}, []*wire{w}, func(s *Station, b *bench) {
 		pass(10 * time.Second)
-		mass = "45.1234"
+		mass.Store("45.1234")
 		pass(10 * time.Second)
 		if got := count(b.weights); got != 2 {
 			t.Fatalf("%d weights, want 2", got)
